@@ -1,0 +1,59 @@
+/* The charge estimator of one pack: an extended Kalman filter over the equivalent circuit, the same
+ * with and without a current channel.
+ *
+ * State: charge, the two polarisation voltages, the load's power as a slowly learned mean and a
+ * fast part around it, the resistance scale and a voltage bias. Measurements, each a scalar update:
+ *   V = OCV(charge) - scale R0 I - u1 - u2 + bias,   I = (mean + fast) / V
+ * and, where it is told, the current itself. A converter draws constant power, hence I = P / V.
+ * The update is iterated (Gauss-Newton) because a wide start crosses bends of the curve.
+ * Method: G. L. Plett, J. Power Sources 134 (2004) 277-292; iterated update: B. M. Bell and
+ * F. W. Cathey, IEEE Trans. Autom. Control 38 (1993) 294-297.
+ */
+#pragma once
+
+#include "core/cell.h"
+
+enum { TRACK_CHARGE, TRACK_U1, TRACK_U2, TRACK_MEAN, TRACK_FAST, TRACK_SCALE, TRACK_BIAS, TRACK_N };
+
+/* What is known before the first sample; NaN in charge = nothing, the first voltage decides. */
+struct tracker_prior {
+    double charge, charge_sd;
+    double u1_V, u2_V; /* NaN = as under the typical load for long */
+    double power_W, power_sd_W;
+    double scale, scale_sd;
+};
+
+struct tracker {
+    double x[TRACK_N];
+    double P[TRACK_N][TRACK_N];
+    double fast_var_W2; /* learned variance of the fast part */
+    double typical_W;   /* scale of what is a usual power, > 0 */
+    double voltage_V;   /* last measured */
+    double temp_C;
+    bool started;
+};
+
+struct tracker_estimate {
+    double charge, charge_sd;
+    double rest_V; /* OCV at the charge, with the bias */
+    double sag_V;  /* rest_V minus terminal voltage of the model */
+    double current_A, power_W;
+    double power_mean_W, power_sd_W;
+    double fast_sd_W; /* spread of the bursts */
+    double scale, scale_sd;
+    double u1_V, u2_V;
+};
+
+/* typical_W > 0: the load before anything is known. */
+void tracker_init(struct tracker *tracker, const struct cell *cell, double typical_W, double temp_C,
+                  const struct tracker_prior *prior);
+
+/* Time passes: dt_s > 0 under the learned load. Spread grows. */
+void tracker_predict(struct tracker *tracker, const struct cell *cell, double dt_s);
+
+/* A sample: pack voltage, current or NaN, temperature. Call tracker_predict before it. */
+void tracker_update(struct tracker *tracker, const struct cell *cell, double voltage_V,
+                    double current_A, double temp_C);
+
+void tracker_read(const struct tracker *tracker, const struct cell *cell,
+                  struct tracker_estimate *ret);
