@@ -1,5 +1,7 @@
 /* Log lines: to the journal with structured fields when stderr is the journal, else to stderr.
- * Only daemon/, client/ and bench/ call it. The level is the product's one mutable static. */
+ * Only daemon/ calls it: it needs libsystemd, which client and bench do not link, so those write to
+ * stderr themselves. The level is the product's one mutable static. A text longer than 1023 bytes
+ * ends in "...", more than 16 fields are left out. errno may change. */
 #pragma once
 
 enum log_level {

@@ -1,6 +1,7 @@
-/* Numbers and units as people write them, in the C locale whatever the environment says.
- * Config values are "NUMBER UNIT" with one space or none between: "3.30 V", "250 mA", "90 s", "8
- * %". */
+/* Numbers and units as people write them. Reading goes by the C locale whatever is set; writing
+ * relies on no program of ours calling setlocale(3).
+ * Config values are "NUMBER UNIT" with spaces or none between: "3.30 V", "250 mA", "90 s", "8 %".
+ * Units are spelt as SI and the trade spell them, upper and lower case told apart. */
 #pragma once
 
 #include <stddef.h>
@@ -21,7 +22,8 @@ enum unit {
 };
 
 enum units_error {
-    UNITS_E_NUMBER = 1, /* no decimal number: also nan, inf, hex, comma, more than a double holds */
+    UNITS_E_NUMBER = 1, /* no decimal number: also nan, inf, hex, comma, more than 120 characters or
+                       than a double holds */
     UNITS_E_MISSING,    /* the unit is missing */
     UNITS_E_UNIT,       /* a unit of another kind, or rubbish behind the number */
 };
@@ -36,9 +38,11 @@ int units_parse(const char *text, enum unit unit, double *ret);
 /* "V or mV": for messages. */
 const char *units_accepted(enum unit unit);
 
-/* A value as a config line would hold it: "3.3 V", "90 s", "8 %". Returns buf. */
+/* A value as a config line would hold it, in as few decimals as read back the same: "3.3 V",
+ * "90 s", "8 %"; "unknown" for NaN, "unlimited" for infinity. 32 bytes hold every sensible value.
+ * Returns buf. */
 char *units_format(double value, enum unit unit, char *buf, size_t size);
 
-/* A duration for people: "2 min 10 s", "5 h 40", "3 d 4 h"; "unknown" for NaN, "no end" for
- * INFINITY. */
+/* A duration for people, cut and not rounded: "45 s", "2 min 10 s", "5 h 40", "3 d 4 h"; "unknown"
+ * for NaN, "no end" for INFINITY, "0 s" for negative ones. 24 bytes hold all. Returns buf. */
 char *units_duration(double seconds, char *buf, size_t size);
