@@ -68,7 +68,8 @@ $(BUILD)/$(1)/$(2): $(patsubst src/%.c,$(BUILD)/$(1)/obj/%.o,$(call src_of,$(3))
 	@$(CC_$(1)) $(LDFLAGS_$(1)) $(6) -o $$@ $$^ $(5)
 endef
 
-# $(1) variant. Tests link every layer and the daemon's, client's and bench's objects but main.
+# $(1) variant. Tests link every layer and the daemon's, client's and bench's objects but main. P in
+# ar: whole paths, so that client/x.o and bench/x.o are two members.
 define VARIANT
 $(BUILD)/$(1)/obj/%.o: src/%.c | $(if $(filter gcc,$(1)),deps,deps-check)
 	@mkdir -p $$(@D)
@@ -84,7 +85,7 @@ $(BUILD)/$(1)/unit/%: $(BUILD)/$(1)/tobj/unit/%.o $(BUILD)/$(1)/libapps.a \
 	@$(CC_$(1)) $(LDFLAGS_$(1)) -o $$@ $$^ $(TEST_LD)
 $(BUILD)/$(1)/libapps.a: $(patsubst src/%.c,$(BUILD)/$(1)/obj/%.o,$(filter-out %/main.c,$(foreach d,daemon client bench,$(call src_of,$(d)))))
 	@rm -f $$@
-	@ar rcs $$@ $$^
+	@ar rcsP $$@ $$^
 $(foreach l,$(LAYERS),$(eval $(call LAYER,$(1),$(l))))
 $(eval $(call PROGRAM,$(1),brinkd,daemon,$(DAEMON_L),$(DAEMON_LD),))
 $(eval $(call PROGRAM,$(1),brink,client,$(CLIENT_L),$(CLIENT_LD),$(if $(filter gcc clang,$(1)),-static-pie)))
