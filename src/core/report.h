@@ -1,5 +1,6 @@
 /* What comes out of the core: one plain struct from which every screen, file and answer is made.
- * NaN = not known. INFINITY in a time = no end in sight (charging, or resting without load). */
+ * UNKNOWN (NaN) = not known. ENDLESS (INFINITY) in a time = no end in sight (charging, or resting
+ * without load). */
 #pragma once
 
 #include "core/sample.h"

@@ -1,0 +1,331 @@
+/* Extended Kalman filter of one pack. The state and the measurement are described in tracker.h.
+ *
+ * The transition matrix is sparse, so prediction works row by row instead of multiplying matrices;
+ * measurements are scalar, so nothing is ever inverted.
+ */
+#include "core/tracker.h"
+
+#include <math.h>
+#include <string.h>
+
+/* Program defaults, the same for every cell. Spreads are one standard deviation. */
+static const double FAST_TAU_S = 20.0;       /* how long a burst of load lasts */
+static const double BIAS_TAU_S = 7200.0;     /* how long the curve is off in one direction */
+static const double MEAN_DRIFT_h = 0.30;     /* the mean load wanders by this share in an hour */
+static const double SCALE_DRIFT_h = 0.06;    /* resistance: the same */
+static const double POLAR_SHARE = 0.15;      /* error of the RC pairs' final voltage */
+static const double VOLTAGE_NOISE_V = 0.004; /* a cell's reading: ADC step and ripple */
+static const double CURRENT_NOISE_h = 0.002; /* current reading, in capacities an hour */
+static const double CURRENT_GAIN = 0.005;    /* and as a share of the reading */
+static const double FAST_LEARN_S = 900.0;    /* time constant of the bursts' learned variance */
+static const double FOLLOW_S = 600.0;        /* the mean follows what the bursts leave over */
+static const double GATE = 5.0;             /* an innovation beyond this many spreads counts less */
+static const double CHARGE_MARGIN = 0.02;   /* how far the state may leave 0..1 */
+static const double CHARGE_SD_BLANK = 0.30; /* nothing known */
+static const int ITERATIONS = 4;            /* of an update that crosses bends of the curve */
+static const double SHARP_CHARGE_SD = 0.03; /* under this one pass is enough */
+
+static double clamp(double x, double low, double high) {
+    return fmin(fmax(x, low), high);
+}
+
+static double square(double x) {
+    return x * x;
+}
+
+static double power_W(const struct tracker *t) {
+    return t->x[TRACK_MEAN] + t->x[TRACK_FAST];
+}
+
+/* ---- start ------------------------------------------------------------------------------------
+ */
+
+static void set_state(struct tracker *t, int i, double value, double sd) {
+    t->x[i] = value;
+    t->P[i][i] = square(sd);
+}
+
+void tracker_init(struct tracker *tracker, const struct cell *cell, double typical_W, double temp_C,
+                  const struct tracker_prior *prior) {
+    double power = isfinite(prior->power_W) ? prior->power_W : typical_W;
+    double power_sd = isfinite(prior->power_sd_W) ? prior->power_sd_W : 0.5 * typical_W;
+
+    memset(tracker, 0, sizeof(*tracker));
+    tracker->typical_W = typical_W;
+    tracker->temp_C = temp_C;
+    tracker->fast_var_W2 = square(0.7 * typical_W);
+    set_state(tracker, TRACK_CHARGE, isfinite(prior->charge) ? prior->charge : 0.5,
+              isfinite(prior->charge) ? prior->charge_sd : CHARGE_SD_BLANK);
+    set_state(tracker, TRACK_U1, prior->u1_V, 0.0);
+    set_state(tracker, TRACK_U2, prior->u2_V, 0.0);
+    set_state(tracker, TRACK_MEAN, power, power_sd);
+    set_state(tracker, TRACK_FAST, 0.0, 0.7 * typical_W);
+    set_state(tracker, TRACK_SCALE, isfinite(prior->scale) ? prior->scale : 1.0,
+              isfinite(prior->scale) ? prior->scale_sd : 0.2);
+    set_state(tracker, TRACK_BIAS, 0.0, cell->table.voltage_sd_V * cell->voltage_factor);
+}
+
+/* The first voltage: where nothing else is known, the curve is read at the voltage behind the sag
+ * of the typical load, and the pairs are taken as if that load had run for long. */
+static void start(struct tracker *t, const struct cell *cell, double voltage_V) {
+    struct cell_point point;
+    double current_A = t->x[TRACK_MEAN] / voltage_V;
+    double nominal_V = voltage_V / cell->voltage_factor, sag_V;
+
+    cell_at(cell, ocv_charge(&cell->table.ocv, nominal_V), t->temp_C, &point);
+    if (!isfinite(t->x[TRACK_U1]) || !isfinite(t->x[TRACK_U2])) {
+        set_state(t, TRACK_U1, point.r1_ohm * current_A, 0.7 * point.r1_ohm * fabs(current_A));
+        set_state(t, TRACK_U2, point.r2_ohm * current_A, 0.7 * point.r2_ohm * fabs(current_A));
+    } else {
+        t->P[TRACK_U1][TRACK_U1] = square(0.25 * fabs(t->x[TRACK_U1]) + 1e-3);
+        t->P[TRACK_U2][TRACK_U2] = square(0.25 * fabs(t->x[TRACK_U2]) + 1e-3);
+    }
+    if (t->P[TRACK_CHARGE][TRACK_CHARGE] >= square(0.15)) {
+        sag_V = (point.r0_ohm * current_A + t->x[TRACK_U1] + t->x[TRACK_U2]) / cell->voltage_factor;
+        t->x[TRACK_CHARGE] = ocv_charge(&cell->table.ocv, nominal_V + sag_V);
+    }
+    t->voltage_V = voltage_V;
+    t->started = true;
+}
+
+/* ---- time passes ------------------------------------------------------------------------------
+ */
+
+struct transition {
+    double fade1, fade2, fast, bias;   /* diagonal */
+    double follow;                     /* mean row */
+    double charge_mean, charge_fast;   /* charge row */
+    double u1_mean, u1_fast, u1_scale; /* pair rows */
+    double u2_mean, u2_fast, u2_scale;
+};
+
+static void add_row(double (*P)[TRACK_N], int row, double keep, int from, double factor) {
+    for (int j = 0; j < TRACK_N; j++)
+        P[row][j] = keep * P[row][j] + factor * P[from][j];
+}
+
+static void transpose(double (*P)[TRACK_N]) {
+    for (int i = 0; i < TRACK_N; i++)
+        for (int j = 0; j < i; j++) {
+            double keep = P[i][j];
+            P[i][j] = P[j][i];
+            P[j][i] = keep;
+        }
+}
+
+/* P = F P, by rows. Rows of the load and the scale are read before they are faded. */
+static void apply_left(double (*P)[TRACK_N], const struct transition *f) {
+    add_row(P, TRACK_CHARGE, 1.0, TRACK_MEAN, f->charge_mean);
+    add_row(P, TRACK_CHARGE, 1.0, TRACK_FAST, f->charge_fast);
+    add_row(P, TRACK_U1, f->fade1, TRACK_MEAN, f->u1_mean);
+    add_row(P, TRACK_U1, 1.0, TRACK_FAST, f->u1_fast);
+    add_row(P, TRACK_U1, 1.0, TRACK_SCALE, f->u1_scale);
+    add_row(P, TRACK_U2, f->fade2, TRACK_MEAN, f->u2_mean);
+    add_row(P, TRACK_U2, 1.0, TRACK_FAST, f->u2_fast);
+    add_row(P, TRACK_U2, 1.0, TRACK_SCALE, f->u2_scale);
+    add_row(P, TRACK_MEAN, 1.0, TRACK_FAST, f->follow);
+    for (int j = 0; j < TRACK_N; j++) {
+        P[TRACK_FAST][j] *= f->fast;
+        P[TRACK_BIAS][j] *= f->bias;
+    }
+}
+
+static void add_noise(struct tracker *t, const struct cell *cell, const struct cell_point *point,
+                      const struct transition *f, double dt_s) {
+    double hours = dt_s / 3600.0, load_W = fmax(fabs(t->x[TRACK_MEAN]), 0.1 * t->typical_W);
+    double current_A = load_W / t->voltage_V;
+    double bias_V = cell->table.voltage_sd_V * cell->voltage_factor;
+    /* a burst that came and went between two samples leaves its charge behind */
+    double unseen_As = sqrt(2.0 * FAST_TAU_S * dt_s * t->fast_var_W2) / t->voltage_V *
+                       (1.0 - exp(-square(dt_s / FAST_TAU_S) / 6.0));
+
+    t->P[TRACK_CHARGE][TRACK_CHARGE] += square(unseen_As / (3600.0 * cell->capacity_Ah));
+    t->P[TRACK_U1][TRACK_U1] +=
+        (1.0 - square(f->fade1)) * square(POLAR_SHARE * point->r1_ohm * current_A);
+    t->P[TRACK_U2][TRACK_U2] +=
+        (1.0 - square(f->fade2)) * square(POLAR_SHARE * point->r2_ohm * current_A);
+    t->P[TRACK_MEAN][TRACK_MEAN] += square(MEAN_DRIFT_h * load_W) * hours;
+    t->P[TRACK_FAST][TRACK_FAST] += (1.0 - square(f->fast)) * t->fast_var_W2;
+    t->P[TRACK_SCALE][TRACK_SCALE] += square(SCALE_DRIFT_h) * hours;
+    t->P[TRACK_BIAS][TRACK_BIAS] += (1.0 - square(f->bias)) * square(bias_V);
+}
+
+static void fill_transition(const struct tracker *t, const struct cell *cell,
+                            const struct cell_point *point, double dt_s, struct transition *f) {
+    double per_W = 1.0 / t->voltage_V, charge_A = -dt_s / (3600.0 * cell->capacity_Ah);
+    double scale = t->x[TRACK_SCALE], share;
+    double current_A;
+
+    f->fade1 = exp(-dt_s / cell->table.tau1_s);
+    f->fade2 = exp(-dt_s / cell->table.tau2_s);
+    f->fast = exp(-dt_s / FAST_TAU_S);
+    f->bias = exp(-dt_s / BIAS_TAU_S);
+    f->follow = 1.0 - exp(-dt_s / FOLLOW_S);
+    /* the fast part fades within the step; this is its mean over the step */
+    share = (1.0 - f->fast) * FAST_TAU_S / dt_s;
+    current_A = (t->x[TRACK_MEAN] + share * t->x[TRACK_FAST]) * per_W;
+    f->charge_mean = charge_A * per_W;
+    f->charge_fast = share * f->charge_mean;
+    f->u1_mean = scale * point->r1_ohm * (1.0 - f->fade1) * per_W;
+    f->u1_fast = share * f->u1_mean;
+    f->u1_scale = point->r1_ohm * (1.0 - f->fade1) * current_A;
+    f->u2_mean = scale * point->r2_ohm * (1.0 - f->fade2) * per_W;
+    f->u2_fast = share * f->u2_mean;
+    f->u2_scale = point->r2_ohm * (1.0 - f->fade2) * current_A;
+}
+
+/* The bursts' variance is what the filter finds them to be, spread included. */
+static void learn_bursts(struct tracker *t, double dt_s) {
+    double seen_W2 = square(t->x[TRACK_FAST]) + t->P[TRACK_FAST][TRACK_FAST];
+
+    t->fast_var_W2 += (1.0 - exp(-dt_s / FAST_LEARN_S)) * (seen_W2 - t->fast_var_W2);
+    t->fast_var_W2 =
+        clamp(t->fast_var_W2, square(0.05 * t->typical_W), square(30.0 * t->typical_W));
+}
+
+void tracker_predict(struct tracker *tracker, const struct cell *cell, double dt_s) {
+    double *x = tracker->x;
+    struct cell_point point;
+    struct transition f;
+
+    if (!tracker->started || !(dt_s > 0.0))
+        return;
+    cell_at(cell, x[TRACK_CHARGE], tracker->temp_C, &point);
+    fill_transition(tracker, cell, &point, dt_s, &f);
+    learn_bursts(tracker, dt_s);
+    x[TRACK_CHARGE] =
+        clamp(x[TRACK_CHARGE] + f.charge_mean * x[TRACK_MEAN] + f.charge_fast * x[TRACK_FAST],
+              -CHARGE_MARGIN, 1.0 + CHARGE_MARGIN);
+    x[TRACK_U1] = f.fade1 * x[TRACK_U1] + f.u1_mean * x[TRACK_MEAN] + f.u1_fast * x[TRACK_FAST];
+    x[TRACK_U2] = f.fade2 * x[TRACK_U2] + f.u2_mean * x[TRACK_MEAN] + f.u2_fast * x[TRACK_FAST];
+    x[TRACK_MEAN] += f.follow * x[TRACK_FAST];
+    x[TRACK_FAST] *= f.fast;
+    x[TRACK_BIAS] *= f.bias;
+    apply_left(tracker->P, &f);
+    transpose(tracker->P);
+    apply_left(tracker->P, &f);
+    add_noise(tracker, cell, &point, &f, dt_s);
+}
+
+/* ---- a measurement ----------------------------------------------------------------------------
+ */
+
+/* Predicted terminal voltage at state x, and its derivatives. */
+static double model_voltage(const struct tracker *t, const struct cell *cell, const double *x,
+                            double voltage_V, double *H) {
+    struct cell_point point;
+    double current_A = (x[TRACK_MEAN] + x[TRACK_FAST]) / voltage_V;
+    double drop_V;
+
+    cell_at(cell, x[TRACK_CHARGE], t->temp_C, &point);
+    drop_V = point.r0_ohm * current_A;
+    H[TRACK_CHARGE] = point.ocv_slope_V;
+    H[TRACK_U1] = H[TRACK_U2] = -1.0;
+    H[TRACK_MEAN] = H[TRACK_FAST] = -x[TRACK_SCALE] * point.r0_ohm / voltage_V;
+    H[TRACK_SCALE] = -drop_V;
+    H[TRACK_BIAS] = 1.0;
+    return point.ocv_V - x[TRACK_SCALE] * drop_V - x[TRACK_U1] - x[TRACK_U2] + x[TRACK_BIAS];
+}
+
+/* gain = P H / S; returns S. */
+static double gain(const struct tracker *t, const double *H, double noise_var, double *PH) {
+    double S = noise_var;
+
+    for (int i = 0; i < TRACK_N; i++) {
+        PH[i] = 0.0;
+        for (int j = 0; j < TRACK_N; j++)
+            PH[i] += t->P[i][j] * H[j];
+    }
+    for (int i = 0; i < TRACK_N; i++)
+        S += H[i] * PH[i];
+    return S;
+}
+
+/* P -= PH PH' / S, kept symmetric and its diagonal positive. */
+static void shrink(struct tracker *t, const double *PH, double S) {
+    for (int i = 0; i < TRACK_N; i++) {
+        double before = t->P[i][i];
+        for (int j = 0; j <= i; j++)
+            t->P[i][j] = t->P[j][i] = t->P[i][j] - PH[i] * PH[j] / S;
+        t->P[i][i] = fmax(t->P[i][i], 1e-9 * before);
+    }
+}
+
+static void hold_in_range(double *x) {
+    x[TRACK_CHARGE] = clamp(x[TRACK_CHARGE], -CHARGE_MARGIN, 1.0 + CHARGE_MARGIN);
+    x[TRACK_SCALE] = clamp(x[TRACK_SCALE], 0.3, 8.0);
+}
+
+/* An innovation beyond the gate is given a wider noise, just so that it lies on the gate: one wild
+ * reading moves little, a lasting change still comes through. */
+static double gated(double S, double innovation) {
+    return fmax(S, square(innovation / GATE));
+}
+
+static void update_voltage(struct tracker *t, const struct cell *cell, double voltage_V) {
+    double x[TRACK_N], H[TRACK_N], PH[TRACK_N], S = 1.0;
+    double noise_var = square(VOLTAGE_NOISE_V * cell->voltage_factor);
+    int passes = t->P[TRACK_CHARGE][TRACK_CHARGE] > square(SHARP_CHARGE_SD) ? ITERATIONS : 1;
+
+    memcpy(x, t->x, sizeof(x));
+    for (int pass = 0; pass < passes; pass++) {
+        double innovation_V = voltage_V - model_voltage(t, cell, x, voltage_V, H);
+
+        for (int i = 0; i < TRACK_N; i++)
+            innovation_V -= H[i] * (t->x[i] - x[i]);
+        S = gated(gain(t, H, noise_var, PH), innovation_V);
+        for (int i = 0; i < TRACK_N; i++)
+            x[i] = t->x[i] + PH[i] / S * innovation_V;
+        hold_in_range(x);
+    }
+    memcpy(t->x, x, sizeof(x));
+    shrink(t, PH, S);
+}
+
+static void update_current(struct tracker *t, const struct cell *cell, double voltage_V,
+                           double current_A) {
+    double H[TRACK_N] = {[TRACK_MEAN] = 1.0 / voltage_V, [TRACK_FAST] = 1.0 / voltage_V};
+    double PH[TRACK_N], noise_var, S, innovation_A = current_A - power_W(t) / voltage_V;
+
+    noise_var = square(CURRENT_NOISE_h * cell->capacity_Ah) + square(CURRENT_GAIN * current_A);
+    S = gain(t, H, noise_var, PH);
+    for (int i = 0; i < TRACK_N; i++)
+        t->x[i] += PH[i] / S * innovation_A;
+    hold_in_range(t->x);
+    shrink(t, PH, S);
+}
+
+void tracker_update(struct tracker *tracker, const struct cell *cell, double voltage_V,
+                    double current_A, double temp_C) {
+    tracker->temp_C = temp_C;
+    if (!tracker->started)
+        start(tracker, cell, voltage_V);
+    if (isfinite(current_A))
+        update_current(tracker, cell, voltage_V, current_A);
+    update_voltage(tracker, cell, voltage_V);
+    tracker->voltage_V = voltage_V;
+}
+
+/* ---- reading ----------------------------------------------------------------------------------
+ */
+
+void tracker_read(const struct tracker *tracker, const struct cell *cell,
+                  struct tracker_estimate *ret) {
+    const double *x = tracker->x;
+    struct cell_point point;
+
+    cell_at(cell, x[TRACK_CHARGE], tracker->temp_C, &point);
+    ret->charge = clamp(x[TRACK_CHARGE], 0.0, 1.0);
+    ret->charge_sd = sqrt(tracker->P[TRACK_CHARGE][TRACK_CHARGE]);
+    ret->power_W = power_W(tracker);
+    ret->current_A = ret->power_W / tracker->voltage_V;
+    ret->rest_V = point.ocv_V + x[TRACK_BIAS];
+    ret->sag_V = x[TRACK_SCALE] * point.r0_ohm * ret->current_A + x[TRACK_U1] + x[TRACK_U2];
+    ret->power_mean_W = x[TRACK_MEAN];
+    ret->power_sd_W = sqrt(tracker->P[TRACK_MEAN][TRACK_MEAN]);
+    ret->fast_sd_W = sqrt(tracker->fast_var_W2);
+    ret->scale = x[TRACK_SCALE];
+    ret->scale_sd = sqrt(tracker->P[TRACK_SCALE][TRACK_SCALE]);
+    ret->u1_V = x[TRACK_U1];
+    ret->u2_V = x[TRACK_U2];
+}
