@@ -65,6 +65,7 @@ int cell_init(struct cell *ret, const struct cell_table *table, int series, doub
     ret->series = series;
     ret->capacity_Ah = capacity_Ah;
     ret->voltage_factor = series;
+    ret->wiring_ohm = 0.0;
     ret->ohm_factor = series * table->capacity_Ah / capacity_Ah;
     return 0;
 }
@@ -107,7 +108,7 @@ void cell_at(const struct cell *cell, double charge, double temp_C, struct cell_
     ret->ocv_V *= cell->voltage_factor;
     ret->ocv_slope_V *= cell->voltage_factor;
     resistance_at(&cell->table, charge, &r0, &r1, &r2);
-    ret->r0_ohm = r0 * factor;
+    ret->r0_ohm = r0 * factor + cell->wiring_ohm;
     ret->r1_ohm = r1 * factor;
     ret->r2_ohm = r2 * factor;
 }

@@ -44,6 +44,7 @@ struct cell {
     double capacity_Ah;
     double voltage_factor; /* series */
     double ohm_factor;     /* series * table capacity / pack capacity */
+    double wiring_ohm;     /* wire and switch between cells and gauge, added to R0; 0 after init */
 };
 
 /* Pack quantities at one charge and temperature. */

@@ -19,6 +19,7 @@ static const double CURRENT_NOISE_h = 0.002; /* current reading, in capacities a
 static const double CURRENT_GAIN = 0.005;    /* and as a share of the reading */
 static const double FAST_LEARN_S = 900.0;    /* time constant of the bursts' learned variance */
 static const double FOLLOW_S = 600.0;        /* the mean follows what the bursts leave over */
+static const double CHANGE_SHARE = 2.0;      /* a changed supply changes the load by this share */
 static const double GATE = 5.0;             /* an innovation beyond this many spreads counts less */
 static const double CHARGE_MARGIN = 0.02;   /* how far the state may leave 0..1 */
 static const double CHARGE_SD_BLANK = 0.30; /* nothing known */
@@ -304,6 +305,10 @@ void tracker_update(struct tracker *tracker, const struct cell *cell, double vol
         update_current(tracker, cell, voltage_V, current_A);
     update_voltage(tracker, cell, voltage_V);
     tracker->voltage_V = voltage_V;
+}
+
+void tracker_load_changed(struct tracker *tracker) {
+    tracker->P[TRACK_MEAN][TRACK_MEAN] += square(CHANGE_SHARE * tracker->typical_W);
 }
 
 /* ---- reading ----------------------------------------------------------------------------------

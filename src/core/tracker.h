@@ -55,5 +55,8 @@ void tracker_predict(struct tracker *tracker, const struct cell *cell, double dt
 void tracker_update(struct tracker *tracker, const struct cell *cell, double voltage_V,
                     double current_A, double temp_C);
 
+/* The load may be quite another from now on (an adapter came or went): its spread grows. */
+void tracker_load_changed(struct tracker *tracker);
+
 void tracker_read(const struct tracker *tracker, const struct cell *cell,
                   struct tracker_estimate *ret);

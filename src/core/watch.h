@@ -5,6 +5,7 @@
 #pragma once
 
 #include "core/cell.h"
+#include "core/endurance.h"
 #include "core/ladder.h"
 #include "core/report.h"
 #include "core/sample.h"
@@ -13,12 +14,12 @@
 struct pack_config {
     char name[NAME_LEN];
     struct cell cell;
-    double cutoff_charge;  /* 0..1 */
-    double cutoff_rest_V;  /* whole pack */
-    double floor_V;        /* whole pack */
-    double carries_W;      /* most its converter can carry; INFINITY = not limited */
-    double typical_W;      /* this pack's share of the load before anything is learned */
-    double resistance_ohm; /* wire and switch between gauge and cells, in series with R0 */
+    double cutoff_charge; /* 0..1 */
+    double cutoff_rest_V; /* whole pack */
+    double floor_V;       /* whole pack */
+    double carries_W;     /* most its converter can carry; ENDLESS = not limited */
+    double typical_W;     /* this pack's share of the load before anything is learned */
+    double wiring_ohm;    /* wire and switch between cells and gauge */
 };
 
 struct watch_config {
@@ -43,6 +44,7 @@ struct watch_memory {
     int64_t t_boot_us; /* when it was taken */
     enum stage stage;
     int64_t stage_since_us;
+    enum cause cause;
     size_t n_packs;
     struct pack_memory pack[PACKS_MAX];
 };
@@ -58,32 +60,38 @@ enum watch_error { WATCH_E_CONFIG = 1 };
 
 struct watch_pack {
     struct tracker tracker;
-    bool known;
-    int64_t t_boot_us;                   /* of the last believable sample; -1 = none */
-    double voltage_V, current_A, temp_C; /* last believable */
-    double slow_V;                       /* rest voltage, low-passed: does the pack rise or fall? */
-    double trend_V_s;
-    int impossible; /* refused of late */
-    int warmup;     /* samples still to be looked at only */
+    struct tracker_prior prior; /* what is known before the first sample */
+    struct tracker_estimate now;
+    struct endurance endurance;
+    bool known, spent;
+    int64_t t_state_us;    /* what time the tracker stands at */
+    int64_t t_believed_us; /* last believable sample, or the start */
+    double voltage_V, temp_C;
+    bool current_measured, temp_measured, under_floor;
+    double smooth_W; /* power, low-passed: which way does it flow? */
+    enum flow flow;
+    int wild;   /* impossible readings of late, fades with good ones */
+    int warmup; /* readings still only looked at */
 };
 
 struct watch {
     struct watch_config config;
     struct watch_pack pack[PACKS_MAX];
     struct ladder ladder;
-    int64_t t_boot_us;     /* last feed or tick */
-    int64_t t_believed_us; /* last believable sample of any pack */
-    double reading;
-    double rail_V, adapter;
-    enum supply supply;
-    int64_t supply_since_us, lost_since_us;
+    int64_t t_start_us, t_boot_us; /* init; last feed or tick */
     int64_t t_endurance_us;
+    double endurance_charge, endurance_W; /* what the last endurance was computed from */
+    double reading, rail_V, adapter;      /* last told */
+    double plugged;                       /* 1 or 0 by line or rail; UNKNOWN */
+    enum supply supply;
+    int64_t supply_since_us;
+    int64_t losing_since_us; /* adapter there, packs fall; -1 = not so */
     uint64_t samples, refused, repeated;
     int repeats_in_row;
-    struct report report; /* the last one */
 };
 
-/* Returns 0 or WATCH_E_CONFIG. */
+/* Returns 0, or WATCH_E_CONFIG when a figure of the configuration is out of its range: no packs or
+ * too many, a cell that was not set up, a typical load not above zero, times below zero, NaN. */
 int watch_init(struct watch *ret, const struct watch_config *config, int64_t t_boot_us);
 
 /* Lays a memory over a fresh watch. gone_s: time since it was taken, NaN = not known. same_boot:
