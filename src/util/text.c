@@ -1,4 +1,4 @@
-/* Text helpers: the near name for "did you mean", and an appending snprintf. */
+/* Text helpers: the near name for "did you mean", an appending snprintf, UTF-8. */
 #include "util/text.h"
 
 #include <stdarg.h>
@@ -83,4 +83,52 @@ bool text_append(char *text, size_t size, size_t *length, const char *format, ..
     }
     *length += (size_t)n;
     return true;
+}
+
+/* By the first byte: how many follow, and the range of the first of them. All others are 80..BF. */
+static const struct lead {
+    unsigned char first, last, follow, low, high;
+} leads[] = {
+    {0x00, 0x7f, 0, 0, 0},       {0xc2, 0xdf, 1, 0x80, 0xbf}, {0xe0, 0xe0, 2, 0xa0, 0xbf},
+    {0xe1, 0xec, 2, 0x80, 0xbf}, {0xed, 0xed, 2, 0x80, 0x9f}, {0xee, 0xef, 2, 0x80, 0xbf},
+    {0xf0, 0xf0, 3, 0x90, 0xbf}, {0xf1, 0xf3, 3, 0x80, 0xbf}, {0xf4, 0xf4, 3, 0x80, 0x8f},
+};
+
+/* Bytes of the character at p, 0 = none. */
+static size_t character(const unsigned char *p, size_t length) {
+    for (size_t k = 0; k < sizeof(leads) / sizeof(leads[0]); k++) {
+        const struct lead *lead = &leads[k];
+        if (p[0] < lead->first || p[0] > lead->last)
+            continue;
+        if (lead->follow >= length)
+            return 0;
+        for (size_t i = 1; i <= lead->follow; i++)
+            if (p[i] < (i == 1 ? lead->low : 0x80) || p[i] > (i == 1 ? lead->high : 0xbf))
+                return 0;
+        return 1U + lead->follow;
+    }
+    return 0;
+}
+
+bool text_is_utf8(const char *text, size_t length) {
+    const unsigned char *p = (const unsigned char *)text;
+
+    for (size_t i = 0; i < length;) {
+        size_t n = character(p + i, length - i);
+        if (n == 0)
+            return false;
+        i += n;
+    }
+    return true;
+}
+
+int text_cut(const char *text, int most) {
+    size_t n = strnlen(text, (size_t)most + 1);
+
+    if (n <= (size_t)most)
+        return (int)n;
+    n = (size_t)most;
+    while (n > 0 && ((unsigned char)text[n] & 0xc0) == 0x80)
+        n--;
+    return (int)n;
 }
