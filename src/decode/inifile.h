@@ -7,8 +7,8 @@
  *       more of the value        an indented line goes on with the value above, joined by one space
  *
  * UTF-8, lines of at most 199 bytes (inih's buffer), files of at most 64 KiB. Key names hold
- * letters, digits, _ and -; an indented line may hold no "=", because it would be a key that got
- * lost in the value above.
+ * letters, digits, _ and -. An indented line may hold no "=": it would be a key that got lost in
+ * the value above. No key may stand before the first section.
  */
 #pragma once
 
@@ -24,7 +24,7 @@ struct inifile_section {
 };
 
 struct inifile_entry {
-    const char *section; /* "" before the first section */
+    const char *section;
     const char *key;
     const char *value; /* may be "" */
     int line;          /* where the key stands */
