@@ -36,10 +36,10 @@ struct rpc_answer {
 };
 
 /* line: without its newline, any bytes. status: the newest report, NULL before the first. An answer
- * longer than size is replaced by the error RPC_LENGTH; size >= RPC_ERROR_MAX. Returns 0, or
- * -ENOMEM when memory ran out (ret untouched). */
-int rpc_answer(const char *line, size_t length, const char *status, size_t status_length, char *buf,
-               size_t size, struct rpc_answer *ret);
+ * longer than size is replaced by the error RPC_LENGTH, one for which memory ran out by
+ * RPC_INTERNAL; size >= RPC_ERROR_MAX. */
+struct rpc_answer rpc_answer(const char *line, size_t length, const char *status,
+                             size_t status_length, char *buf, size_t size);
 
 /* An error line with id null, as for what never became a request. Returns its length. */
 size_t rpc_error(enum rpc_code code, char *buf, size_t size);
