@@ -56,6 +56,7 @@ SYSTEM := $(wildcard tests/system/test_*)
 # $(1) variant, $(2) layer
 define LAYER
 $(BUILD)/$(1)/lib$(2).a: $(patsubst src/%.c,$(BUILD)/$(1)/obj/%.o,$(call src_of,$(2)))
+	@mkdir -p $$(@D)
 	@rm -f $$@
 	@ar rcs $$@ $$^
 endef
