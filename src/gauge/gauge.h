@@ -87,7 +87,7 @@ const char *gauge_describe(const struct gauge *gauge);
 
 /* A sentence or two on error (as returned by gauge_open, gauge_read or gauge_tell, < 0 or > 0):
  * which device, what is wrong, what was found, what to do. Valid until the next call on gauge. */
-const char *gauge_error_text(const struct gauge *gauge, int error);
+const char *gauge_error_text(struct gauge *gauge, int error);
 
 /* The same for an error of gauge_new, where there is no gauge. Returns buf. */
 const char *gauge_config_error_text(const struct gauge_config *config, int error, char *buf,

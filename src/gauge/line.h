@@ -78,12 +78,18 @@ void line_restart(struct line_decoder *decoder, bool mid_line);
 /* Takes at most n bytes and returns how many: fewer when lines wait for line_next. */
 size_t line_push(struct line_decoder *decoder, const void *bytes, size_t n);
 
+/* How many bytes line_push would take now. */
+size_t line_room(const struct line_decoder *decoder);
+
 /* 1 and the next frame, or 0: no whole good line is in hand, push more. */
 int line_next(struct line_decoder *decoder, struct frame *ret);
 
 /* Decodes one line without its newline. Returns 0, or 1 + enum line_fault; ret is undefined then.
  * ret_checked (may be NULL): the line had a check, and it was right. */
 int line_decode(const char *text, size_t length, struct frame *ret, bool *ret_checked);
+
+/* How many characters at the start of text make a token's name; 0 when none can begin there. */
+size_t line_name_length(const char *text, size_t length);
 
 /* "duplicate": one word, for logs and metrics. */
 const char *line_fault_name(enum line_fault fault);
