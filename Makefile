@@ -85,6 +85,7 @@ $(BUILD)/$(1)/unit/%: $(BUILD)/$(1)/tobj/unit/%.o $(BUILD)/$(1)/libapps.a \
 	@mkdir -p $$(@D)
 	@$(CC_$(1)) $(LDFLAGS_$(1)) -o $$@ $$^ $(TEST_LD)
 $(BUILD)/$(1)/libapps.a: $(patsubst src/%.c,$(BUILD)/$(1)/obj/%.o,$(filter-out %/main.c,$(foreach d,daemon client bench,$(call src_of,$(d)))))
+	@mkdir -p $$(@D)
 	@rm -f $$@
 	@ar rcsP $$@ $$^
 $(foreach l,$(LAYERS),$(eval $(call LAYER,$(1),$(l))))
