@@ -49,9 +49,12 @@ int ocv_init(struct ocv *ret, const double *charge, const double *voltage_V, siz
     for (size_t i = 0; i < n; i++)
         if (!isfinite(charge[i]) || !isfinite(voltage_V[i]))
             return OCV_E_NUMBER;
-    for (size_t i = 1; i < n; i++)
+    for (size_t i = 1; i < n; i++) {
         if (!(charge[i] > charge[i - 1]) || voltage_V[i] < voltage_V[i - 1])
             return OCV_E_ORDER;
+        if (!isfinite(secant(charge, voltage_V, i - 1)))
+            return OCV_E_NUMBER;
+    }
     memset(ret, 0, sizeof(*ret));
     ret->n = n;
     memcpy(ret->charge, charge, n * sizeof(*charge));
@@ -96,7 +99,8 @@ void ocv_at(const struct ocv *ocv, double charge, double *ret_voltage_V, double 
         *ret_voltage_V = ocv->voltage_V[last] + *ret_slope_V * (charge - ocv->charge[last]);
     } else {
         hermite(ocv, interval(ocv->charge, ocv->n, charge), charge, ret_voltage_V, ret_slope_V);
-        *ret_slope_V = fmax(*ret_slope_V, 0.0);
+        if (*ret_slope_V < 0.0) /* by rounding; NaN stays */
+            *ret_slope_V = 0.0;
     }
 }
 
@@ -132,8 +136,8 @@ static double invert(const struct ocv *ocv, size_t i, double voltage_V) {
 double ocv_charge(const struct ocv *ocv, double voltage_V) {
     size_t last = ocv->n - 1, first = 0, end;
 
-    if (!(voltage_V > ocv->voltage_V[0]) && ocv->voltage_V[1] > ocv->voltage_V[0])
-        return ocv->charge[0];
+    if (isnan(voltage_V))
+        return voltage_V;
     if (voltage_V < ocv->voltage_V[0])
         return ocv->charge[0];
     if (voltage_V > ocv->voltage_V[last])

@@ -15,7 +15,7 @@ enum { OCV_POINTS_MAX = 128 };
 enum ocv_error {
     OCV_E_SIZE = 1, /* fewer than 2 or more than OCV_POINTS_MAX points */
     OCV_E_ORDER,  /* charge does not strictly rise, or voltage falls, from one point to the next */
-    OCV_E_NUMBER, /* a value is not finite */
+    OCV_E_NUMBER, /* a value, or the slope between two points, is not finite */
 };
 
 struct ocv {
@@ -38,5 +38,5 @@ double ocv_slope(const struct ocv *ocv, double charge);
 void ocv_at(const struct ocv *ocv, double charge, double *ret_voltage_V, double *ret_slope_V);
 
 /* Inverse: the charge whose voltage this is, held to the table's ends; on a flat step its middle.
- */
+ * NaN for NaN. */
 double ocv_charge(const struct ocv *ocv, double voltage_V);
