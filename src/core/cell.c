@@ -14,7 +14,7 @@ static const char *limits_wrong(const struct cell_table *t) {
     if (!positive(t->capacity_Ah))
         return "the capacity is not above zero";
     if (!(t->possible_low_V < t->damage_V && t->damage_V < t->full_V &&
-          t->full_V < t->possible_high_V))
+          t->full_V < t->possible_high_V && isfinite(t->possible_high_V)))
         return "the voltages must rise: possible_low, damage, full, possible_high";
     if (!(t->possible_low_V > 0.0))
         return "possible_low must be above zero: a dead wire reads zero";
@@ -41,13 +41,25 @@ static const char *resistance_wrong(const struct cell_table *t) {
     return NULL;
 }
 
+static const char *curve_wrong(const struct cell_table *t) {
+    size_t last = t->ocv.n - 1;
+
+    if (t->ocv.n < 2 || t->ocv.n > OCV_POINTS_MAX)
+        return "the open-circuit curve has too few or too many points";
+    if (!(t->ocv.charge[0] >= 0.0 && t->ocv.charge[last] <= 1.0))
+        return "the open-circuit curve leaves 0 to 100 %";
+    if (!(t->ocv.voltage_V[0] > t->possible_low_V && t->ocv.voltage_V[last] < t->possible_high_V))
+        return "the open-circuit curve leaves possible_low to possible_high";
+    return NULL;
+}
+
 int cell_table_check(const struct cell_table *table, const char **ret_what) {
     const char *what = limits_wrong(table);
 
     if (!what)
         what = resistance_wrong(table);
-    if (!what && (table->ocv.n < 2 || table->ocv.n > OCV_POINTS_MAX))
-        what = "the open-circuit curve has too few or too many points";
+    if (!what)
+        what = curve_wrong(table);
     if (!what)
         return 0;
     *ret_what = what;
@@ -61,6 +73,8 @@ int cell_init(struct cell *ret, const struct cell_table *table, int series, doub
         return CELL_E_RANGE;
     if (cell_table_check(table, &what))
         return CELL_E_TABLE;
+    if (!positive(series * table->capacity_Ah / capacity_Ah))
+        return CELL_E_RANGE;
     ret->table = *table;
     ret->series = series;
     ret->capacity_Ah = capacity_Ah;
@@ -73,6 +87,8 @@ int cell_init(struct cell *ret, const struct cell_table *table, int series, doub
 double cell_arrhenius(const struct cell_table *table, double temp_C) {
     double t_K = fmax(temp_C, -60.0) + ZERO_C_K, ref_K = table->res_temp_C + ZERO_C_K;
 
+    if (isnan(temp_C))
+        return 1.0;
     return exp(table->arrhenius_J_mol / GAS_J_mol_K * (1.0 / t_K - 1.0 / ref_K));
 }
 
@@ -119,11 +135,11 @@ double cell_source_V(const struct cell_point *point, const struct cell_state *st
 
 int cell_solve_power(double source_V, double r_ohm, double power_W, double *ret_voltage_V,
                      double *ret_current_A) {
-    double square = source_V * source_V - 4.0 * r_ohm * power_W, voltage_V;
+    double voltage_V;
 
-    if (!(source_V > 0.0) || !(square >= 0.0))
+    if (!(source_V > 0.0) || !(r_ohm >= 0.0) || !(power_W <= source_V * source_V / (4.0 * r_ohm)))
         return CELL_E_POWER;
-    voltage_V = 0.5 * (source_V + sqrt(square));
+    voltage_V = 0.5 * (source_V + sqrt(fmax(source_V * source_V - 4.0 * r_ohm * power_W, 0.0)));
     *ret_voltage_V = voltage_V;
     *ret_current_A = power_W / voltage_V;
     return 0;

@@ -24,7 +24,8 @@ struct cell_table {
     double capacity_Ah;            /* of the cell the table was made from */
     double full_V;                 /* end of charge */
     double damage_V;               /* published least voltage; a cutoff under it harms the cell */
-    double possible_low_V;         /* a reading outside low..high is no reading of such a cell */
+    double possible_low_V;         /* a reading outside low..high is no reading of such a cell; the
+                                    * curve lies inside */
     double possible_high_V;
     double voltage_sd_V; /* how far the curve may be off, one standard deviation */
     struct ocv ocv;
@@ -59,7 +60,7 @@ struct cell_state {
 };
 
 enum cell_error {
-    CELL_E_RANGE = 1, /* series < 1, capacity not > 0 */
+    CELL_E_RANGE = 1, /* series < 1, capacity not > 0 or out of all proportion to the table's */
     CELL_E_TABLE,     /* the table breaks one of the rules above */
     CELL_E_POWER,     /* the pack cannot give that power: above OCV^2 / 4R */
 };
@@ -70,7 +71,8 @@ int cell_table_check(const struct cell_table *table, const char **ret_what);
 /* Returns 0 or CELL_E_RANGE, CELL_E_TABLE; ret is not touched then. */
 int cell_init(struct cell *ret, const struct cell_table *table, int series, double capacity_Ah);
 
-/* exp(Ea/R (1/T - 1/T_res)): what resistances are multiplied by at temp_C. */
+/* exp(Ea/R (1/T - 1/T_res)): what resistances are multiplied by at temp_C, held under -60 C. NaN =
+ * not known counts as the table's temperature: 1. */
 double cell_arrhenius(const struct cell_table *table, double temp_C);
 
 void cell_at(const struct cell *cell, double charge, double temp_C, struct cell_point *ret);
