@@ -66,7 +66,8 @@ define PROGRAM
 $(BUILD)/$(1)/$(2): $(patsubst src/%.c,$(BUILD)/$(1)/obj/%.o,$(call src_of,$(3))) \
                     $(patsubst %,$(BUILD)/$(1)/lib%.a,$(4))
 	@echo "link  $$@"
-	@$(CC_$(1)) $(LDFLAGS_$(1)) $(6) -o $$@ $$^ $(5)
+	@$(CC_$(1)) $(if $(filter -static-pie,$(6)),$(filter-out -pie,$(LDFLAGS_$(1))),$(LDFLAGS_$(1))) \
+	    $(6) -o $$@ $$^ $(5)
 endef
 
 # $(1) variant. Tests link every layer and the daemon's, client's and bench's objects but main. P in

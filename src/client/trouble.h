@@ -1,0 +1,14 @@
+/* What went wrong, for the person who asked: the words and the exit code of sysexits.h. One is
+ * filled where the fault is found and told in main.c. */
+#pragma once
+
+enum { TROUBLE_TEXT = 2048 };
+
+struct trouble {
+    int code; /* EX_USAGE, EX_DATAERR, ...; 0 = none */
+    char text[TROUBLE_TEXT];
+};
+
+/* Fills trouble and returns code. */
+int trouble_set(struct trouble *trouble, int code, const char *format, ...)
+    __attribute__((format(printf, 3, 4)));
