@@ -236,9 +236,9 @@ struct rpc_answer rpc_answer(const char *line, size_t length, const char *status
         return (struct rpc_answer){.length = rpc_error(RPC_PARSE, buf, size)};
     scoped(decref_p) json_t *root = json_loadb(line, length, flags, &error);
     if (!root) {
-        bool no_memory = json_error_code(&error) == json_error_out_of_memory;
-        return (struct rpc_answer){.length =
-                                       rpc_error(no_memory ? RPC_INTERNAL : RPC_PARSE, buf, size)};
+        /* jansson names no reason for most of its failed allocations. */
+        enum rpc_code code = error.text[0] ? RPC_PARSE : RPC_INTERNAL;
+        return (struct rpc_answer){.length = rpc_error(code, buf, size)};
     }
     size_t answered = answer_root(root, &call, buf, size);
     return (struct rpc_answer){.length = answered, .follow = call.follow};
