@@ -5,9 +5,11 @@
  * fast part around it, the resistance scale and a voltage bias. Measurements, each a scalar update:
  *   V = OCV(charge) - scale R0 I - u1 - u2 + bias,   I = (mean + fast) / V
  * and, where it is told, the current itself. A converter draws constant power, hence I = P / V.
- * The update is iterated (Gauss-Newton) because a wide start crosses bends of the curve.
- * Method: G. L. Plett, J. Power Sources 134 (2004) 277-292; iterated update: B. M. Bell and
- * F. W. Cathey, IEEE Trans. Autom. Control 38 (1993) 294-297.
+ * The bias is reckoned with but not learned (it would drink the signal), and so is the resistance
+ * scale without a current: S. F. Schmidt's consider filter, Advances in Control Systems 3 (1966)
+ * 293-340 (from memory). The update is iterated (Gauss-Newton) because a wide start crosses bends
+ * of the curve. Method: G. L. Plett, J. Power Sources 134 (2004) 277-292; iterated update: B. M.
+ * Bell and F. W. Cathey, IEEE Trans. Autom. Control 38 (1993) 294-297.
  */
 #pragma once
 
@@ -30,7 +32,8 @@ struct tracker {
     double typical_W;   /* scale of what is a usual power, > 0 */
     double voltage_V;   /* last measured */
     double temp_C;
-    bool started;
+    double dt_s; /* last step */
+    bool started, current_told;
 };
 
 struct tracker_estimate {

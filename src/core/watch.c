@@ -26,8 +26,7 @@ static double span_s(int64_t from_us, int64_t to_us) {
     return (double)(to_us - from_us) * 1e-6;
 }
 
-/* ---- start, memory ----------------------------------------------------------------------------
- */
+/* ---- start, memory ---- */
 
 static bool pack_sound(const struct pack_config *p) {
     return p->cell.series >= 1 && p->cell.capacity_Ah > 0.0 && p->cutoff_charge >= 0.0 &&
@@ -135,8 +134,7 @@ void watch_remember(const struct watch *watch, struct watch_memory *ret) {
     }
 }
 
-/* ---- one pack's reading -----------------------------------------------------------------------
- */
+/* ---- one pack's reading ---- */
 
 static bool possible_voltage(const struct cell *cell, double voltage_V) {
     return voltage_V >= cell->table.possible_low_V * cell->voltage_factor &&
@@ -227,8 +225,7 @@ static bool feed_pack(struct watch *watch, size_t i, struct pack_sample sample, 
     return true;
 }
 
-/* ---- supply -----------------------------------------------------------------------------------
- */
+/* ---- supply ---- */
 
 static double adapter_told(const struct watch *watch) {
     if (isfinite(watch->adapter))
@@ -263,8 +260,7 @@ static void note_supply(struct watch *watch) {
         watch->losing_since_us = watch->t_boot_us;
 }
 
-/* ---- looking ahead ----------------------------------------------------------------------------
- */
+/* ---- looking ahead ---- */
 
 static bool ahead_due(const struct watch *watch) {
     double age_s = span_s(watch->t_endurance_us, watch->t_boot_us), left_s = ENDLESS;
@@ -301,8 +297,7 @@ static void look_ahead(struct watch *watch) {
     watch->t_endurance_us = watch->t_boot_us;
 }
 
-/* ---- feed and tick ----------------------------------------------------------------------------
- */
+/* ---- feed and tick ---- */
 
 /* Packs whose gauge is silent go on by the model, and start anew with a look when it returns. */
 static void run_blind_packs(struct watch *watch) {

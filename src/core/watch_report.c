@@ -18,8 +18,7 @@ static double span_s(int64_t from_us, int64_t to_us) {
     return (double)(to_us - from_us) * 1e-6;
 }
 
-/* ---- packs ------------------------------------------------------------------------------------
- */
+/* ---- packs ---- */
 
 bool report_pack_blind(const struct watch *watch, size_t pack) {
     return span_s(watch->pack[pack].t_believed_us, watch->t_boot_us) > watch->config.silent_s;
@@ -73,8 +72,7 @@ enum flow report_flow(const struct watch *watch) {
     return charging ? FLOW_CHARGING : FLOW_RESTING;
 }
 
-/* ---- the unit ---------------------------------------------------------------------------------
- */
+/* ---- the unit ---- */
 
 static double need_W(const struct watch *watch) {
     double sum_W = 0.0;
@@ -140,8 +138,7 @@ static double unit_charge(const struct watch *watch, double spreads) {
     return weights > 0.0 ? sum / weights : UNKNOWN;
 }
 
-/* ---- for the ladder ---------------------------------------------------------------------------
- */
+/* ---- for the ladder ---- */
 
 static void sum_cutoffs(const struct watch *watch, struct ladder_input *in) {
     const struct ladder_config *ladder = &watch->config.ladder;
@@ -181,8 +178,7 @@ void report_ladder_input(const struct watch *watch, bool new_sample, struct ladd
     sum_cutoffs(watch, ret);
 }
 
-/* ---- for people -------------------------------------------------------------------------------
- */
+/* ---- for people ---- */
 
 static unsigned alerts_of(const struct watch *watch) {
     bool none_out[PACKS_MAX] = {false};
