@@ -161,8 +161,8 @@ static void read_sections(struct reading *reading, const struct inifile *ini) {
         reading_problem(reading, section->line,
                         "unknown section [%s]%s%s%s; accepted are [unit], [gauge], [pack NAME], "
                         "[ladder], [stop] and [files]",
-                        section->name, near ? ", did you mean [" : "", near ? near : "",
-                        near ? "]?" : "");
+                        section->name, near ? " (did you mean [" : "", near ? near : "",
+                        near ? "]?)" : "");
     }
 }
 
@@ -201,7 +201,7 @@ static void unknown_key(struct reading *reading, const char *section,
                         strcmp(elsewhere, "pack") == 0 ? " NAME" : "");
     else if (near)
         reading_problem(reading, entry->line,
-                        "unknown key %s in [%s], did you mean %s?; accepted "
+                        "unknown key %s in [%s] (did you mean %s?); accepted "
                         "are %s",
                         entry->key, entry->section, near, list);
     else
