@@ -29,7 +29,7 @@ class Log:
         self.z = 1.0 - col["charge_Ah"] / capacity
         self.temp = col.get("temp_C", np.full(len(self.t), REF_C if temp is None else temp))
         # A row counts by the time it stands for: rests are logged more thinly than pulses.
-        self.weight = weight * np.clip(np.gradient(self.t), 0.5, 30.0)
+        self.weight = weight * np.clip(np.gradient(self.t), 0.5, 60.0)
         if most is not None:  # rows with more current tell of a load no small computer has
             self.weight[np.abs(self.I) > most] = 0.0
         self.weight[self.t < skip_s] = 0.0
@@ -82,7 +82,7 @@ def curve(table):
 class Problem:
     """Logs, charge points of the resistances, and optionally points where the curve may move."""
 
-    def __init__(self, logs, ocv, points, ocv_points=None, ocv_pull=0.02, smooth=0.3,
+    def __init__(self, logs, ocv, points, ocv_points=None, ocv_pull=0.02, smooth=0.01,
                  rest_current=0.0):
         self.logs, self.ocv, self.points = logs, curve(ocv), np.asarray(points, float)
         self.ocv_points = None if ocv_points is None else np.asarray(ocv_points, float)
@@ -116,18 +116,19 @@ class Problem:
             targets.append((log.V - self.ocv(log.z))[use] * w[:, 0])
         return np.vstack(blocks), np.concatenate(targets), n, m, len(shifts)
 
-    def penalties(self, n, m, s, rows):
-        """Smooth resistances (second difference over the points, in log-like scale), a small curve
-        correction, small offsets."""
+    def penalties(self, n, m, s, rows, scale):
+        """Smooth resistances: their second difference over the points, as a share of themselves
+        (scale), counts like a residual of `smooth` volts. A small curve correction, small
+        offsets."""
         out = []
-        strength = self.smooth * np.sqrt(rows)
-        for block in range(3):
-            for i in range(1, n - 1):
+        width = np.diff(self.points)
+        for i in range(3 * n):
+            block, k = divmod(i, n)
+            if 0 < k < n - 1:
                 line = np.zeros(3 * n + m + s)
-                h0, h1 = np.diff(self.points)[i - 1:i + 1]
-                line[block * n + i - 1:block * n + i + 2] = np.array(
-                    [h1, -(h0 + h1), h0]) / (h0 + h1) * strength
-                out.append(line)
+                h0, h1 = width[k - 1:k + 1]
+                line[i - 1:i + 2] = np.array([h1, -(h0 + h1), h0]) / (h0 + h1)
+                out.append(line * self.smooth * np.sqrt(rows) / scale[i])
         for j in range(m):
             line = np.zeros(3 * n + m + s)
             line[3 * n + j] = self.ocv_pull * np.sqrt(rows)
@@ -138,14 +139,19 @@ class Problem:
             out.append(line)
         return np.array(out).reshape(-1, 3 * n + m + s)
 
-    def solve(self, tau1, tau2, energy, least=0.0005, most=2.0):
+    def solve(self, tau1, tau2, energy, least=0.0002, most=2.0):
         a, b, n, m, s = self.system(tau1, tau2, energy)
-        extra = self.penalties(n, m, s, len(b))
-        full, target = np.vstack([a, extra]), np.concatenate([b, np.zeros(len(extra))])
-        q, r = np.linalg.qr(full)
         low = np.concatenate([np.full(3 * n, least), np.full(m + s, -0.3)])
         high = np.concatenate([np.full(3 * n, most), np.full(m + s, 0.3)])
-        x = lsq_linear(r, q.T @ target, (low, high), method="bvls").x
+        scale = np.full(3 * n, 0.02)
+        for _ in range(4):
+            extra = self.penalties(n, m, s, len(b), scale)
+            q, r = np.linalg.qr(np.vstack([a, extra]))
+            x = lsq_linear(r, q[:len(b)].T @ b, (low, high), method="bvls").x
+            near = x[:3 * n].reshape(3, n)
+            floor = np.median(near, axis=1, keepdims=True) * np.ones(n)
+            scale = np.maximum(near, 0.3 * floor).ravel()
+            low[:3 * n] = np.maximum(0.2 * floor.ravel(), least)
         cost = np.sum((a @ x - b) ** 2)
         return Solution(self, tau1, tau2, energy, x, n, m, cost, len(b))
 

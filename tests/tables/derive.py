@@ -13,6 +13,7 @@ repository; without them the script says so and ends with 77. Needs Debian's pyt
 import argparse
 import os
 import sys
+import textwrap
 
 import numpy as np
 
@@ -76,13 +77,15 @@ def nca(search):
     log = log_of(NCA, q)
     ocv = data.table("ocv_measured", ["Kollmeyer 2018"], "_25C_session.csv", "ocv_V")
     small = {"most": 3.2, "shift": True, "weight": 4.0}
-    problem = Problem([log(["HPPC", "25degC"], **small), log(["LA92", "25degC"]),
+    problem = Problem([log(["HPPC", "25degC"], **small), log(["UDDS"]),
                        log(["profile 1C", "fresh"])], ocv, POINTS)
     found = fit(problem, search, 10, 300)
     energy = energy_of(found, [log(["HPPC", "ambient 0degC"], **small),
                                log(["HPPC", "n10degC"], **small)])
     return of_solution("nca-18650", 2.888, found, energy), log, [
-        ["Cycle_1", "25degC"], ["UDDS"], ["Cycle_1", "ambient 10degC"], ["Cycle_3", "ambient 0degC"],
+        ["LA92", "25degC"], ["Cycle_1", "25degC"], ["HPPC", "25degC"],
+        ["HPPC", "ambient 0degC"], ["HPPC", "n10degC"], ["Cycle_1", "ambient 10degC"],
+        ["Cycle_3", "ambient 0degC"],
         ["Cycle_1", "n10degC"], ["Cycle_1", "n20degC"]]
 
 
@@ -96,7 +99,9 @@ def nmc(search):
     energy = energy_of(found, [log(["short drive segment"]), log(["profile 0.5C", "ambient 0degC"]),
                                log(["profile 0.5C", "n10degC"])])
     return of_solution("nmc-18650", 2.781, found, energy), log, [
-        ["Mixed1", "25degC"], ["Mixed1", "ambient 10degC"], ["Mixed1", "ambient 0degC"],
+        ["profile 0.5C", "25degC"], ["profile 0.5C", "ambient 0degC"], ["profile 0.5C", "n10degC"],
+        ["short drive segment"], ["Mixed1", "25degC"], ["Mixed1", "ambient 10degC"],
+        ["Mixed1", "ambient 0degC"],
         ["Mixed1", "n10degC"], ["Mixed1", "n20degC"]]
 
 
@@ -117,9 +122,21 @@ def lipo(search):
     points = np.array([2, 5, 10, 15, 20, 30, 40, 50, 60, 70, 80, 90]) / 100
     move = np.array([0, 2, 4, 6, 8, 10, 14, 18, 24, 30, 40, 50, 60, 70, 80, 86, 100]) / 100
     problem = Problem([log(["profile 1C"], skip_s=120), log(["profile 2C"], skip_s=120)], ocv,
-                      points, ocv_points=move, ocv_pull=0.01, smooth=1.0)
+                      points, ocv_points=move, ocv_pull=0.01)
     found = fit(problem, search, 10, 600)
     return of_solution("lipo-pouch", q, found, WARM), log, [["profile 1C"], ["profile 2C"]]
+
+
+def lfp(search):
+    q = 1.2
+    log = log_of("terencetao", q)
+    z, v = data.table("ocv_measured", ["Tao"], "_hysteresis.csv", "ocv_avg_V")
+    move = np.arange(15, 90, 5) / 100
+    problem = Problem([log(["long flat-zone"], thin=3)], (z, rising(v)),
+                      np.arange(20, 90, 10) / 100, ocv_points=move, ocv_pull=0.5)
+    found = fit(problem, search, 20, 600)
+    found.move[:] = 0.0  # the rested branches are the better witness
+    return of_solution("lfp", q, found, WARM), log, [["long flat-zone"]]
 
 
 def on_window(curve, low_V, high_V):
@@ -156,7 +173,7 @@ def generic(search):
 
 
 RECIPES = {"nca-18650": nca, "nmc-18650": nmc, "nmc811-21700": nmc811, "lipo-pouch": lipo,
-           "generic-li-ion": generic}
+           "lfp": lfp, "generic-li-ion": generic}
 
 
 def fit(problem, search, tau1, tau2):
@@ -190,7 +207,9 @@ def rising(values):
 def file_of(table):
     text = TEXT[table.name]
     volts = rising(np.round(table.ocv(np.array(CURVE) / 100), 4))
-    head = "\n".join("# " + line if line else "#" for line in text["about"].strip().split("\n"))
+    parts = [textwrap.fill(" ".join(part.split()), 98, initial_indent="# ",
+                           subsequent_indent="# ") for part in text["about"].split("\n\n")]
+    head = "\n#\n".join(parts)
     fields = [("name", table.name), ("chemistry", text["chemistry"]),
               ("capacity", f"{table.capacity:.4g} Ah")]
     fields += [(key, text[key]) for key in
