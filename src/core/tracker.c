@@ -22,6 +22,8 @@ static const double POLAR_SHARE = 0.15;      /* error of the RC pairs' final vol
 static const double VOLTAGE_NOISE_V = 0.004; /* a cell's reading: ADC step and ripple */
 static const double MODEL_SHARE = 0.1;       /* error of the modelled sag, as a share of it */
 static const double MODEL_TAU_S = 60.0;      /* and for how long it errs in one direction */
+static const double WAKING_V = 0.2; /* inrush, a slow supply: the first readings, a cell, */
+static const double WAKING_S = 5.0; /* and how fast they come right */
 static const double CURRENT_NOISE_h = 0.002; /* current reading, in capacities an hour */
 static const double CURRENT_GAIN = 0.005;    /* and as a share of the reading */
 static const double FAST_LEARN_S = 900.0;    /* time constant of the bursts' learned variance */
@@ -201,6 +203,7 @@ void tracker_predict(struct tracker *tracker, const struct cell *cell, double dt
         return;
     cell_at(cell, x[TRACK_CHARGE], tracker->temp_C, &point);
     tracker->dt_s = dt_s;
+    tracker->age_s += dt_s;
     fill_transition(tracker, cell, &point, dt_s, &f);
     learn_bursts(tracker, dt_s);
     x[TRACK_CHARGE] =
@@ -291,6 +294,7 @@ static double voltage_noise_var(const struct tracker *t, const struct cell *cell
 
     cell_at(cell, t->x[TRACK_CHARGE], t->temp_C, &point);
     return square(VOLTAGE_NOISE_V * cell->voltage_factor) +
+           square(WAKING_V * cell->voltage_factor * exp(-t->age_s / WAKING_S)) +
            square(MODEL_SHARE * (point.r0_ohm + point.r1_ohm + point.r2_ohm) * current_A) *
                fmax(2.0 * MODEL_TAU_S / t->dt_s, 1.0);
 }

@@ -32,7 +32,8 @@ struct tracker {
     double typical_W;   /* scale of what is a usual power, > 0 */
     double voltage_V;   /* last measured */
     double temp_C;
-    double dt_s; /* last step */
+    double dt_s;  /* last step */
+    double age_s; /* since the first sample */
     bool started, current_told;
 };
 

@@ -18,7 +18,7 @@ static const double STEPS_MOST = 1000.0;
 static const double AHEAD_SHARE = 0.01, AHEAD_LEAST_S = 2.0, AHEAD_MOST_S = 60.0;
 static const double AHEAD_CHARGE = 0.01, AHEAD_LOAD = 0.05; /* changes that ask for a new look */
 static const int WILD_MOST = 10;
-static const int WARMUP = 1; /* a gauge may tell rubbish right after it wakes */
+static const int WARMUP = 3; /* a gauge may tell rubbish right after it wakes; inrush passes */
 /* Learned over a stop of unknown events (swapped, charged, stood long): spread of the charge. */
 static const double AWAY_SD = 0.10, AWAY_SD_h = 0.002;
 
@@ -194,21 +194,21 @@ static void believe_others(struct watch_pack *pack, const struct watch_config *c
     pack->current_measured = isfinite(s->current_A);
 }
 
-/* True when the pack's reading was believed. */
-static bool feed_pack(struct watch *watch, size_t i, struct pack_sample sample, int64_t t_boot_us) {
+static enum watch_verdict feed_pack(struct watch *watch, size_t i, struct pack_sample sample,
+                                    int64_t t_boot_us) {
     struct watch_pack *pack = &watch->pack[i];
     const struct pack_config *config = &watch->config.pack[i];
     double dt_s = pack->known ? span_s(pack->t_state_us, t_boot_us) : -1.0;
 
-    if (!isfinite(sample.voltage_V))
-        return false;
+    if (isnan(sample.voltage_V))
+        return WATCH_EMPTY;
     if (!possible_voltage(&config->cell, sample.voltage_V)) {
         grow_wild(pack);
-        return false;
+        return WATCH_REFUSED;
     }
     if (pack->warmup > 0) {
         pack->warmup--;
-        return false;
+        return WATCH_WARMUP;
     }
     believe_others(pack, &watch->config, &config->cell, &sample);
     if (!pack->known)
@@ -222,7 +222,7 @@ static bool feed_pack(struct watch *watch, size_t i, struct pack_sample sample, 
     pack->under_floor = sample.voltage_V < config->floor_V;
     pack->wild -= pack->wild > 0;
     read_pack(watch, i, dt_s);
-    return true;
+    return WATCH_TAKEN;
 }
 
 /* ---- supply ---- */
@@ -330,19 +330,19 @@ static void conclude(struct watch *watch, bool new_sample, struct report *ret_re
     report_fill(watch, ret_report);
 }
 
-static bool feed_packs(struct watch *watch, const struct sample *sample) {
-    bool believed = false, told = false;
+/* The best that became of any pack's reading. */
+static enum watch_verdict feed_packs(struct watch *watch, const struct sample *sample) {
+    bool seen[WATCH_EMPTY + 1] = {false};
 
-    for (size_t i = 0; i < watch->config.n_packs; i++) {
-        if (feed_pack(watch, i, sample->pack[i], sample->t_boot_us))
-            believed = true;
-        told = told || isfinite(sample->pack[i].voltage_V);
-    }
-    if (believed)
-        watch->samples++;
-    else if (told)
-        watch->refused++;
-    return believed;
+    for (size_t i = 0; i < watch->config.n_packs; i++)
+        seen[feed_pack(watch, i, sample->pack[i], sample->t_boot_us)] = true;
+    watch->samples += seen[WATCH_TAKEN];
+    watch->refused += seen[WATCH_REFUSED];
+    if (seen[WATCH_TAKEN])
+        return WATCH_TAKEN;
+    if (seen[WATCH_WARMUP])
+        return WATCH_WARMUP;
+    return seen[WATCH_REFUSED] ? WATCH_REFUSED : WATCH_EMPTY;
 }
 
 static void hear_lines(struct watch *watch, const struct sample *sample) {
@@ -352,28 +352,27 @@ static void hear_lines(struct watch *watch, const struct sample *sample) {
         watch->rail_V = sample->rail_V;
 }
 
-enum watch_verdict watch_feed(struct watch *watch, const struct sample *sample,
-                              struct report *ret_report) {
-    bool late = sample->t_boot_us < watch->t_boot_us, believed = false;
-    bool repeated = !late && sample->reading == watch->reading;
-
-    if (!late)
-        watch->t_boot_us = sample->t_boot_us;
-    if (repeated) {
+static enum watch_verdict take(struct watch *watch, const struct sample *sample) {
+    if (sample->t_boot_us < watch->t_boot_us)
+        return WATCH_LATE;
+    watch->t_boot_us = sample->t_boot_us;
+    if (sample->reading == watch->reading) {
         watch->repeated++;
         watch->repeats_in_row++;
-    } else if (!late) {
-        watch->repeats_in_row = 0;
-        watch->reading = sample->reading;
-        hear_lines(watch, sample);
-        believed = feed_packs(watch, sample);
-    }
-    conclude(watch, believed, ret_report);
-    if (late)
-        return WATCH_LATE;
-    if (repeated)
         return WATCH_REPEATED;
-    return believed ? WATCH_TAKEN : WATCH_REFUSED;
+    }
+    watch->repeats_in_row = 0;
+    watch->reading = sample->reading;
+    hear_lines(watch, sample);
+    return feed_packs(watch, sample);
+}
+
+enum watch_verdict watch_feed(struct watch *watch, const struct sample *sample,
+                              struct report *ret_report) {
+    enum watch_verdict verdict = take(watch, sample);
+
+    conclude(watch, verdict == WATCH_TAKEN, ret_report);
+    return verdict;
 }
 
 void watch_tick(struct watch *watch, int64_t t_boot_us, struct report *ret_report) {

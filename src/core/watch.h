@@ -54,6 +54,8 @@ enum watch_verdict {
     WATCH_REFUSED,  /* no channel of it was possible for its pack */
     WATCH_REPEATED, /* the same reading as before */
     WATCH_LATE,     /* its time lies before the last one */
+    WATCH_WARMUP,   /* only looked at: the first readings after the start or a silence */
+    WATCH_EMPTY,    /* no pack's voltage in it */
 };
 
 enum watch_error { WATCH_E_CONFIG = 1 };
