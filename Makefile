@@ -84,7 +84,8 @@ $(BUILD)/$(1)/tobj/%.o: tests/%.c | deps-check
 $(BUILD)/$(1)/unit/%: $(BUILD)/$(1)/tobj/unit/%.o $(BUILD)/$(1)/libapps.a \
                       $(patsubst %,$(BUILD)/$(1)/lib%.a,$(DAEMON_L))
 	@mkdir -p $$(@D)
-	@$(CC_$(1)) $(LDFLAGS_$(1)) -o $$@ $$^ $(TEST_LD)
+	@$(CC_$(1)) $(LDFLAGS_$(1)) $$(TEST_WRAP) -o $$@ $$^ $(TEST_LD)
+$(BUILD)/$(1)/unit/test_server: TEST_WRAP := -Wl,--wrap=malloc,--wrap=calloc
 $(BUILD)/$(1)/libapps.a: $(patsubst src/%.c,$(BUILD)/$(1)/obj/%.o,$(filter-out %/main.c,$(foreach d,daemon client bench,$(call src_of,$(d)))))
 	@mkdir -p $$(@D)
 	@rm -f $$@

@@ -42,7 +42,7 @@ struct client {
     bool follows;
     bool ended;      /* the peer sends no more */
     bool skipping;   /* inside a line that is too long */
-    unsigned missed; /* reports since something waits to go out */
+    unsigned missed; /* reports while it waited for room to send */
     const char *out; /* what waits, of out_slot or out_heap; NULL = nothing */
     size_t out_length, out_sent;
     struct slot *out_slot;
@@ -126,16 +126,16 @@ static void out_clear(struct client *client) {
     client->out = NULL;
 }
 
-static void out_set(struct client *client, const char *bytes, size_t length, size_t sent) {
+static void out_set(struct client *client, const char *bytes, size_t length) {
     client->out = bytes;
     client->out_length = length;
-    client->out_sent = sent;
+    client->out_sent = 0;
 }
 
-static void out_set_slot(struct client *client, struct slot *slot, size_t sent) {
+static void out_set_slot(struct client *client, struct slot *slot) {
     slot_unref(client->out_slot);
     client->out_slot = slot_ref(slot);
-    out_set(client, slot->bytes, slot->length, sent);
+    out_set(client, slot->bytes, slot->length);
 }
 
 static int out_set_rest(struct client *client, const char *rest, size_t length) {
@@ -148,7 +148,7 @@ static int out_set_rest(struct client *client, const char *rest, size_t length) 
         return -ENOMEM;
     memcpy(client->out_heap, rest, length);
     server->queued += length;
-    out_set(client, client->out_heap, length, 0);
+    out_set(client, client->out_heap, length);
     return 0;
 }
 
@@ -173,7 +173,7 @@ static int out_flush(struct client *client) {
         out_clear(client);
         client->missed = 0;
         if (client->pending)
-            out_set_slot(client, client->pending, 0);
+            out_set_slot(client, client->pending);
         client->pending = slot_unref(client->pending);
     }
     return 0;
@@ -187,25 +187,19 @@ static int out_answer(struct client *client, const char *answer, size_t length) 
     return (size_t)n == length ? 0 : out_set_rest(client, answer + n, length - (size_t)n);
 }
 
-/* A report for one client, which may be no follower and merely grow older by it. */
+/* A report for one client. One that waits for room to send, follower or not, grows older by it. */
 static int out_report(struct client *client, struct slot *slot) {
-    if (client->out && ++client->missed >= client->server->limits.missed)
-        return -ETIMEDOUT;
-    if (!client->follows)
-        return 0;
-    if (client->out_slot && client->out_sent == 0) {
-        out_set_slot(client, slot, 0);
-    } else if (client->out) {
+    if (client->follows && client->out && (client->out_heap || client->out_sent > 0)) {
         slot_unref(client->pending);
         client->pending = slot_ref(slot);
-    } else {
-        ssize_t n = send_some(client->fd, slot->bytes, slot->length);
-        if (n < 0)
-            return (int)n;
-        if ((size_t)n < slot->length)
-            out_set_slot(client, slot, (size_t)n);
+    } else if (client->follows) {
+        out_set_slot(client, slot); /* also in place of one that was not begun */
     }
-    return 0;
+    int r = out_flush(client);
+    if (r == 0 && (client->out || client->events == EPOLLOUT) &&
+        ++client->missed >= client->server->limits.missed)
+        return -ETIMEDOUT;
+    return r;
 }
 
 /* ---- one client: coming in. Returns as above. ---- */
@@ -303,6 +297,8 @@ static int client_turn(struct client *client, uint32_t revents) {
     if (revents & (EPOLLHUP | EPOLLERR))
         return -EPIPE; /* both directions are gone, nobody would read an answer */
     int r = out_flush(client);
+    if (!client->out)
+        client->missed = 0;
     if (r == 0)
         r = serve_lines(client, &budget);
     if (r == 0 && budget > 0 && !client->out && !client->ended && !has_line(client)) {

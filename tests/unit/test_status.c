@@ -1,8 +1,9 @@
 /* The status object: its exact bytes, its null rules, its names, and that all of it always fits. */
 #include "publish/status.h"
 
+#include "util/real.h"
+
 #include <jansson.h>
-#include <math.h>
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stdio.h>
@@ -56,7 +57,7 @@ static struct pack_report heron_pack(void) {
         .temp_measured = true,
         .left_s = 20400,
         .left_least_s = 17700,
-        .full_s = NAN,
+        .full_s = UNKNOWN,
         .ends_by = CAUSE_CHARGE,
         .resistance_ohm = 0.096,
         .resistance_scale = 1.07,
@@ -78,8 +79,8 @@ static struct report heron_report(void) {
         .left_s = 20400,
         .left_least_s = 17700,
         .to_reserve_s = 15000,
-        .full_s = NAN,
-        .grace_left_s = NAN,
+        .full_s = UNKNOWN,
+        .grace_left_s = UNKNOWN,
         .power_W = 3.1,
         .power_mean_W = 3.05,
         .rail_V = 4.97,
@@ -172,13 +173,13 @@ static void test_not_known_is_null(void **state) {
     struct pack_report *pack = &report.pack[0];
 
     (void)state;
-    report.charge = report.charge_low = report.charge_high = NAN;
-    report.left_s = report.left_least_s = report.to_reserve_s = NAN;
-    report.power_W = report.power_mean_W = report.rail_V = report.age_s = NAN;
-    pack->charge = pack->charge_low = pack->charge_high = NAN;
-    pack->terminal_V = pack->rest_V = pack->sag_V = pack->current_A = NAN;
-    pack->power_W = pack->power_mean_W = pack->temp_C = pack->left_s = pack->left_least_s = NAN;
-    pack->resistance_ohm = pack->resistance_scale = NAN;
+    report.charge = report.charge_low = report.charge_high = UNKNOWN;
+    report.left_s = report.left_least_s = report.to_reserve_s = UNKNOWN;
+    report.power_W = report.power_mean_W = report.rail_V = report.age_s = UNKNOWN;
+    pack->charge = pack->charge_low = pack->charge_high = UNKNOWN;
+    pack->terminal_V = pack->rest_V = pack->sag_V = pack->current_A = UNKNOWN;
+    pack->power_W = pack->power_mean_W = pack->temp_C = pack->left_s = pack->left_least_s = UNKNOWN;
+    pack->resistance_ohm = pack->resistance_scale = UNKNOWN;
     json_t *root = render(&report, &context);
     json_t *first = json_array_get(json_object_get(root, "packs"), 0);
     for (size_t i = 0; i < COUNT(unit_keys); i++)
@@ -196,8 +197,8 @@ static void test_no_end_is_null_and_endless(void **state) {
     struct report report = heron_report();
 
     (void)state;
-    report.left_s = INFINITY;
-    report.pack[0].left_s = report.pack[0].left_least_s = INFINITY;
+    report.left_s = ENDLESS;
+    report.pack[0].left_s = report.pack[0].left_least_s = ENDLESS;
     json_t *root = render(&report, &context);
     json_t *first = json_array_get(json_object_get(root, "packs"), 0);
     assert_null_at(root, "left_s");
