@@ -29,19 +29,14 @@ static void put(struct jsonw *w, const char *text, size_t n) {
 }
 
 static void put_key(struct jsonw *w, const char *key) {
-    size_t n = key ? strlen(key) : 0;
-    char *at = reserve(w, (w->comma ? 1 : 0) + (key ? n + 3 : 0));
-
-    if (!at)
-        return;
     if (w->comma)
-        *at++ = ',';
-    if (key) {
-        *at++ = '"';
-        memcpy(at, key, n);
-        memcpy(at + n, "\":", 2);
-    }
+        put(w, ",", 1);
     w->comma = true;
+    if (!key)
+        return;
+    put(w, "\"", 1);
+    put(w, key, strlen(key));
+    put(w, "\":", 2);
 }
 
 void jsonw_open(struct jsonw *w, const char *key, char bracket) {

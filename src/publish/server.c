@@ -71,7 +71,7 @@ const struct server_limits server_limits_default = {
     .line = 4096,
     .report = STATUS_SIZE_MAX,
     .answer = 32768,
-    .queued = 1024 * 1024,
+    .queued = 1048576,
     .missed = 32,
     .turn = 4,
     .priority = SD_EVENT_PRIORITY_IDLE,
@@ -205,9 +205,11 @@ static int out_report(struct client *client, struct slot *slot) {
 /* ---- one client: coming in. Returns as above. ---- */
 
 static bool is_blank(const char *line, size_t length) {
-    while (length > 0 && memchr(" \t\r", line[length - 1], 3))
-        length--;
-    return length == 0;
+    size_t i = 0;
+
+    while (i < length && (line[i] == ' ' || line[i] == '\t' || line[i] == '\r'))
+        i++;
+    return i == length;
 }
 
 static int serve_line(struct client *client, const char *line, size_t length) {

@@ -2,16 +2,15 @@
  * system calls; the temporary file is created afresh each time and never followed or shared. */
 #include "publish/statusfile.h"
 
-#include "util/cleanup.h"
-
 #include <errno.h>
 #include <fcntl.h>
 #include <limits.h>
-#include <stdbool.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 #include <sys/stat.h>
 #include <sys/uio.h>
+#include <unistd.h>
 
 struct statusfile {
     char *dir;
@@ -38,27 +37,25 @@ void statusfile_free_p(struct statusfile **file) {
     *file = statusfile_free(*file);
 }
 
-static bool fits(char ret[static NAME_MAX + 1], const char *before, const char *name,
-                 const char *after) {
-    return snprintf(ret, NAME_MAX + 1, "%s%s%s", before, name, after) <= NAME_MAX;
-}
-
 int statusfile_new(struct statusfile **ret, const char *path) {
     const char *slash = strrchr(path, '/'), *name = slash ? slash + 1 : path;
-    scoped(statusfile_free_p) struct statusfile *file = calloc(1, sizeof(*file));
 
+    if (!*name || strcmp(name, ".") == 0 || strcmp(name, "..") == 0)
+        return -EINVAL;
+    if (strlen(name) + strlen("..new") > NAME_MAX)
+        return -ENAMETOOLONG;
+    struct statusfile *file = calloc(1, sizeof(*file));
     if (!file)
         return -ENOMEM;
     file->dir_fd = -1;
-    if (!*name || strcmp(name, ".") == 0 || strcmp(name, "..") == 0)
-        return -EINVAL;
-    if (!fits(file->name, "", name, "") || !fits(file->temp, ".", name, ".new"))
-        return -ENAMETOOLONG;
+    snprintf(file->name, sizeof(file->name), "%s", name);
+    snprintf(file->temp, sizeof(file->temp), ".%s.new", name);
     file->dir = slash ? strndup(path, slash == path ? 1 : (size_t)(slash - path)) : strdup(".");
-    if (!file->dir)
+    if (!file->dir) {
+        free(file);
         return -ENOMEM;
+    }
     *ret = file;
-    file = NULL;
     return 0;
 }
 
