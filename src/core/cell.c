@@ -48,7 +48,7 @@ static const char *curve_wrong(const struct cell_table *t) {
         return "the open-circuit curve has too few or too many points";
     if (!(t->ocv.charge[0] >= 0.0 && t->ocv.charge[last] <= 1.0))
         return "the open-circuit curve leaves 0 to 100 %";
-    if (!(t->ocv.voltage_V[0] > t->possible_low_V && t->ocv.voltage_V[last] < t->possible_high_V))
+    if (!(t->ocv.voltage_V[0] >= t->possible_low_V && t->ocv.voltage_V[last] <= t->possible_high_V))
         return "the open-circuit curve leaves possible_low to possible_high";
     return NULL;
 }

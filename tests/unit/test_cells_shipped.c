@@ -4,6 +4,7 @@
 #include "decode/celltable.h"
 #include "decode/inifile.h"
 #include "util/cleanup.h"
+#include "util/files.h"
 
 #include <glob.h>
 #include <math.h>
@@ -215,6 +216,45 @@ static void generic_spread_is_honest(void **state) {
     between("generic-li-ion", "rms distance", sqrt(sum) / generic.voltage_sd_V, 0.3, 1.2);
 }
 
+/* The example of brink-cells(5) is a table. */
+static void example_of_the_manual(void **state) {
+    (void)state;
+    scoped(free_p) char *page = NULL;
+    const char *begin, *end;
+    struct cell_table table;
+    char message[512] = "";
+    size_t length;
+
+    assert_int_equal(files_read("man/brink-cells.5", 65536, &page, &length), 0);
+    begin = strstr(page, ".Sh EXAMPLES\n.Bd -literal\n");
+    assert_non_null(begin);
+    begin = strchr(strchr(begin, '\n') + 1, '\n') + 1;
+    end = strstr(begin, ".Ed\n");
+    assert_non_null(end);
+    if (celltable_parse(begin, (size_t)(end - begin), "example", &table, message, sizeof(message)))
+        fail_msg("%s", message);
+    assert_int_equal(table.ocv.n, 12);
+    assert_int_equal(table.n_res, 4);
+}
+
+/* Every shipped table stands in brink-cells(5). */
+static void is_in_the_manual(const char *path, const char *name) {
+    scoped(free_p) char *page = NULL;
+    char item[64];
+    size_t length;
+
+    (void)path;
+    (void)snprintf(item, sizeof(item), "\n.It %s\n", name);
+    assert_int_equal(files_read("man/brink-cells.5", 65536, &page, &length), 0);
+    if (!strstr(page, item))
+        fail_msg("%s is not named in man/brink-cells.5", name);
+}
+
+static void all_in_the_manual(void **state) {
+    (void)state;
+    for_each(is_in_the_manual);
+}
+
 int main(void) {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(all_load),
@@ -224,6 +264,8 @@ int main(void) {
         cmocka_unit_test(nca_at_rest),
         cmocka_unit_test(like_published_curves),
         cmocka_unit_test(generic_spread_is_honest),
+        cmocka_unit_test(example_of_the_manual),
+        cmocka_unit_test(all_in_the_manual),
     };
 
     return cmocka_run_group_tests(tests, NULL, NULL);
