@@ -123,6 +123,13 @@ static void transpose(double (*P)[TRACK_N]) {
         }
 }
 
+/* Takes the rounding out of what is symmetric by its nature. */
+static void even_out(double (*P)[TRACK_N]) {
+    for (int i = 0; i < TRACK_N; i++)
+        for (int j = 0; j < i; j++)
+            P[i][j] = P[j][i] = 0.5 * (P[i][j] + P[j][i]);
+}
+
 /* P = F P, by rows. Rows of the load and the scale are read before they are faded. */
 static void apply_left(double (*P)[TRACK_N], const struct transition *f) {
     add_row(P, TRACK_CHARGE, 1.0, TRACK_MEAN, f->charge_mean);
@@ -217,6 +224,7 @@ void tracker_predict(struct tracker *tracker, const struct cell *cell, double dt
     apply_left(tracker->P, &f);
     transpose(tracker->P);
     apply_left(tracker->P, &f);
+    even_out(tracker->P);
     add_noise(tracker, cell, &point, &f, dt_s);
 }
 

@@ -217,6 +217,7 @@ static enum watch_verdict feed_pack(struct watch *watch, size_t i, struct pack_s
         predict_to(pack, &config->cell, t_boot_us);
     tracker_update(&pack->tracker, &config->cell, sample.voltage_V, sample.current_A, pack->temp_C);
     pack->known = true;
+    pack->silent = false;
     pack->t_state_us = pack->t_believed_us = t_boot_us;
     pack->voltage_V = sample.voltage_V;
     pack->under_floor = sample.voltage_V < config->floor_V;
@@ -307,7 +308,9 @@ static void run_blind_packs(struct watch *watch) {
 
         if (!report_pack_blind(watch, i))
             continue;
-        pack->warmup = WARMUP;
+        if (!pack->silent)
+            pack->warmup = WARMUP;
+        pack->silent = true;
         pack->under_floor = false;
         pack->current_measured = false;
         if (pack->known && dt_s > 0.0) {

@@ -66,6 +66,7 @@ struct watch_pack {
     struct tracker_estimate now;
     struct endurance endurance;
     bool known, spent;
+    bool silent;           /* went blind and has not been believed since */
     int64_t t_state_us;    /* what time the tracker stands at */
     int64_t t_believed_us; /* last believable sample, or the start */
     double voltage_V, temp_C;
