@@ -1,12 +1,15 @@
 /* The status object: its exact bytes, its null rules, its names, and that all of it always fits. */
 #include "publish/status.h"
 
+#include "util/files.h"
 #include "util/real.h"
 
 #include <jansson.h>
 #include <setjmp.h>
 #include <stdarg.h>
+#include <stdbool.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 #include <cmocka.h>
@@ -339,6 +342,68 @@ static void test_the_widest_fits(void **state) {
     assert_string_equal(buf, "");
 }
 
+/* ---- the manual page ---- */
+
+static char *manual;
+
+static void assert_in_manual(const char *word) {
+    const size_t n = strlen(word);
+    const char *at = manual;
+
+    /* As a word of its own on a line of markup, not somewhere in the text. */
+    for (; (at = strstr(at, word)); at += n) {
+        const char *line = at;
+        while (line > manual && line[-1] != '\n')
+            line--;
+        bool begins = at[-1] == ' ', ends = strchr(" \n", at[n]) != NULL;
+        if (begins && ends && (strncmp(line, ".It Li ", 7) == 0 || strncmp(line, ".Li ", 4) == 0))
+            return;
+    }
+    fail_msg("man/brink-status.7 does not tell of %s", word);
+}
+
+static void assert_keys_in_manual(const json_t *value) {
+    const char *key;
+    json_t *member;
+
+    json_object_foreach((json_t *)value, key, member) {
+        assert_in_manual(key);
+        assert_keys_in_manual(member);
+    }
+    for (size_t i = 0; i < json_array_size(value); i++)
+        assert_keys_in_manual(json_array_get(value, i));
+}
+
+/* Every key and every name that can stand as a value is told of in brink-status(7). */
+static void test_the_manual_tells_all(void **state) {
+    const struct watch_config config = heron_config();
+    const struct status_context context = heron_context(&config);
+    struct report report = heron_report();
+    size_t length;
+
+    (void)state;
+    assert_int_equal(files_read("man/brink-status.7", 1 << 20, &manual, &length), 0);
+    report.alerts = ALERT_GUESS;
+    json_t *root = render(&report, &context);
+    assert_keys_in_manual(root);
+    json_decref(root);
+    for (size_t i = 0; i < COUNT(all_alerts); i++)
+        assert_in_manual(status_alert_name(all_alerts[i]));
+    for (unsigned i = 0; i <= STAGE_LEAVING; i++)
+        assert_in_manual(status_stage_name((enum stage)i));
+    for (unsigned i = 0; i <= SUPPLY_BOTH; i++)
+        assert_in_manual(status_supply_name((enum supply)i));
+    for (unsigned i = 0; i <= FLOW_RESTING; i++)
+        assert_in_manual(status_flow_name((enum flow)i));
+    for (unsigned i = 0; i <= CAUSE_BLIND; i++)
+        assert_in_manual(status_cause_name((enum cause)i));
+    for (unsigned i = 0; i <= STATUS_GAUGE_LOST; i++)
+        assert_in_manual(status_gauge_state_name((enum status_gauge_state)i));
+    for (unsigned i = 0; i <= STATUS_REQUEST_FAILED; i++)
+        assert_in_manual(status_request_name((enum status_request)i));
+    free(manual);
+}
+
 int main(void) {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(test_golden),
@@ -349,6 +414,7 @@ int main(void) {
         cmocka_unit_test(test_alert_words),
         cmocka_unit_test(test_names),
         cmocka_unit_test(test_the_widest_fits),
+        cmocka_unit_test(test_the_manual_tells_all),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
