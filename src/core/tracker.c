@@ -30,6 +30,7 @@ static const double FAST_LEARN_S = 900.0;    /* time constant of the bursts' lea
 static const double FOLLOW_S = 600.0;        /* the mean follows what the bursts leave over */
 static const double CHANGE_SHARE = 2.0;      /* a changed supply changes the load by this share */
 static const double SAG_SHARE = 0.20;        /* the mean sag is off by this share */
+static const double UNSEEN_SHARE = 0.1;      /* of the typical load: less is not believed unseen */
 static const double GATE = 5.0;             /* an innovation beyond this many spreads counts less */
 static const double CHARGE_MARGIN = 0.02;   /* how far the state may leave 0..1 */
 static const double CHARGE_SD_BLANK = 0.30; /* nothing known */
@@ -355,6 +356,17 @@ void tracker_update(struct tracker *tracker, const struct cell *cell, double vol
 
 void tracker_load_changed(struct tracker *tracker) {
     tracker->P[TRACK_MEAN][TRACK_MEAN] += square(CHANGE_SHARE * tracker->typical_W);
+}
+
+void tracker_unseen(struct tracker *tracker) {
+    if (tracker->x[TRACK_MEAN] > UNSEEN_SHARE * tracker->typical_W)
+        return;
+    for (int i = 0; i < TRACK_N; i++) {
+        tracker->P[TRACK_MEAN][i] = tracker->P[i][TRACK_MEAN] = 0.0;
+        tracker->P[TRACK_FAST][i] = tracker->P[i][TRACK_FAST] = 0.0;
+    }
+    set_state(tracker, TRACK_MEAN, tracker->typical_W, 0.5 * tracker->typical_W);
+    set_state(tracker, TRACK_FAST, 0.0, sqrt(tracker->fast_var_W2));
 }
 
 /* ---- reading ---- */

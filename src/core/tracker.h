@@ -62,5 +62,9 @@ void tracker_update(struct tracker *tracker, const struct cell *cell, double vol
 /* The load may be quite another from now on (an adapter came or went): its spread grows. */
 void tracker_load_changed(struct tracker *tracker);
 
+/* From now on nothing is heard: a charger that cannot be seen is not relied on, so a load that was
+ * none or negative is taken as the typical one. */
+void tracker_unseen(struct tracker *tracker);
+
 void tracker_read(const struct tracker *tracker, const struct cell *cell,
                   struct tracker_estimate *ret);

@@ -17,6 +17,7 @@ static const double STEP_LONGEST_S = 300.0; /* of one prediction, unless the gap
 static const double STEPS_MOST = 1000.0;
 static const double AHEAD_SHARE = 0.01, AHEAD_LEAST_S = 2.0, AHEAD_MOST_S = 60.0;
 static const double AHEAD_CHARGE = 0.01, AHEAD_LOAD = 0.05; /* changes that ask for a new look */
+static const double AHEAD_IDLE = 0.1; /* of the typical load: under it changes do not matter */
 static const int WILD_MOST = 10;
 static const int WARMUP = 3; /* a gauge may tell rubbish right after it wakes; inrush passes */
 /* Learned over a stop of unknown events (swapped, charged, stood long): spread of the charge. */
@@ -265,17 +266,19 @@ static void note_supply(struct watch *watch) {
 
 static bool ahead_due(const struct watch *watch) {
     double age_s = span_s(watch->t_endurance_us, watch->t_boot_us), left_s = ENDLESS;
-    double charge = 0.0, power_W = 0.0;
+    double charge = 0.0, power_W = 0.0, usual_W = 0.0;
 
     for (size_t i = 0; i < watch->config.n_packs; i++) {
         if (!watch->pack[i].known)
             continue;
         charge += watch->pack[i].now.charge;
         power_W += watch->pack[i].now.power_mean_W;
+        usual_W += watch->config.pack[i].typical_W;
         left_s = fmin(left_s, watch->pack[i].endurance.left_s);
     }
     return !(fabs(charge - watch->endurance_charge) < AHEAD_CHARGE) ||
-           !(fabs(power_W - watch->endurance_W) < AHEAD_LOAD * fabs(power_W)) ||
+           !(fabs(power_W - watch->endurance_W) <
+             AHEAD_LOAD * fmax(fabs(power_W), AHEAD_IDLE * usual_W)) ||
            age_s >= fmax(AHEAD_LEAST_S, fmin(AHEAD_SHARE * left_s, AHEAD_MOST_S));
 }
 
@@ -300,6 +303,13 @@ static void look_ahead(struct watch *watch) {
 
 /* ---- feed and tick ---- */
 
+static void fall_silent(struct watch_pack *pack) {
+    pack->silent = true;
+    pack->warmup = WARMUP;
+    if (pack->known)
+        tracker_unseen(&pack->tracker);
+}
+
 /* Packs whose gauge is silent go on by the model, and start anew with a look when it returns. */
 static void run_blind_packs(struct watch *watch) {
     for (size_t i = 0; i < watch->config.n_packs; i++) {
@@ -309,8 +319,7 @@ static void run_blind_packs(struct watch *watch) {
         if (!report_pack_blind(watch, i))
             continue;
         if (!pack->silent)
-            pack->warmup = WARMUP;
-        pack->silent = true;
+            fall_silent(pack);
         pack->under_floor = false;
         pack->current_measured = false;
         if (pack->known && dt_s > 0.0) {

@@ -74,7 +74,8 @@ enum flow report_flow(const struct watch *watch) {
 
 /* ---- the unit ---- */
 
-static double need_W(const struct watch *watch) {
+/* Mean load and bursts of all known packs. */
+static double load_W(const struct watch *watch) {
     double sum_W = 0.0;
 
     for (size_t i = 0; i < watch->config.n_packs; i++)
@@ -82,6 +83,21 @@ static double need_W(const struct watch *watch) {
             sum_W += fmax(watch->pack[i].now.power_mean_W, 0.0) +
                      BURST_SPREADS * watch->pack[i].now.fast_sd_W;
     return sum_W;
+}
+
+static double most_W(const struct watch *watch) {
+    double sum_W = 0.0;
+
+    for (size_t i = 0; i < watch->config.n_packs; i++)
+        if (watch->pack[i].known)
+            sum_W += watch->config.pack[i].carries_W;
+    return sum_W;
+}
+
+/* What those that remain must carry. The unit runs, so its packs together carry it, whatever the
+ * estimate of bursts says: an overload is an alert, never an end by itself. */
+static double need_W(const struct watch *watch) {
+    return fmin(load_W(watch), most_W(watch));
 }
 
 /* counts: packs that are known and that the caller does not rule out. */
@@ -181,7 +197,6 @@ void report_ladder_input(const struct watch *watch, bool new_sample, struct ladd
 /* ---- for people ---- */
 
 static unsigned alerts_of(const struct watch *watch) {
-    bool none_out[PACKS_MAX] = {false};
     unsigned alerts = report_blind(watch) ? ALERT_SILENT : 0;
     bool any = false;
 
@@ -204,7 +219,7 @@ static unsigned alerts_of(const struct watch *watch) {
         alerts |= ALERT_LOSING;
     if (watch->repeats_in_row >= REPEATS_ALERT)
         alerts |= ALERT_REPEATED;
-    if (any && !carried_without(watch, none_out))
+    if (any && load_W(watch) > most_W(watch))
         alerts |= ALERT_OVERLOAD;
     return alerts;
 }

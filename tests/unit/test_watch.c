@@ -140,6 +140,43 @@ static void silence_makes_blind_and_the_model_goes_on_to_the_end(void **unused) 
     assert_true(f.state.charge < 0.35); /* but not with a third in the pack */
 }
 
+/* The gauge falls silent while the pack charges; then the adapter is pulled, unseen. */
+static void a_charger_that_cannot_be_seen_is_not_relied_on(void **unused) {
+    struct watch_config config = fen_config();
+    struct watch watch;
+    struct report r;
+    struct fen f = fen_pack(&config, 0.4, -6.0);
+
+    (void)unused;
+    f.adapter = 1.0;
+    assert_int_equal(watch_init(&watch, &config, 0), 0);
+    fen_feed(&watch, &f, 1200, 1.0, &r);
+    assert_int_equal(r.flow, FLOW_CHARGING);
+    f.power_W = 3.0;
+    while (f.state.charge > 0.06 && r.stage != STAGE_LEAVING) {
+        fen_run(&f, 10.0);
+        watch_tick(&watch, f.t_boot_us, &r);
+    }
+    assert_int_equal(r.stage, STAGE_LEAVING);
+    assert_int_not_equal(r.supply, SUPPLY_ADAPTER);
+}
+
+/* A converter that is smaller than load and bursts as estimated: said, but no reason to stop. */
+static void an_overload_is_no_end(void **unused) {
+    struct watch_config config = fen_config();
+    struct watch watch;
+    struct report r;
+    struct fen f = fen_pack(&config, 0.7, 3.0);
+
+    (void)unused;
+    config.pack[0].carries_W = 2.5;
+    assert_int_equal(watch_init(&watch, &config, 0), 0);
+    fen_feed(&watch, &f, 1800, 1.0, &r);
+    assert_true(r.alerts & ALERT_OVERLOAD);
+    assert_int_equal(r.stage, STAGE_AMPLE);
+    assert_true(r.left_s > 3600.0);
+}
+
 static void the_gauge_returns(void **unused) {
     struct watch_config config = fen_config();
     struct watch watch;
@@ -294,6 +331,8 @@ int main(void) {
         cmocka_unit_test(a_pack_never_heard_is_not_relied_on_nor_empty),
         cmocka_unit_test(floor_of_one_pack_counts_only_when_it_matters),
         cmocka_unit_test(silence_makes_blind_and_the_model_goes_on_to_the_end),
+        cmocka_unit_test(a_charger_that_cannot_be_seen_is_not_relied_on),
+        cmocka_unit_test(an_overload_is_no_end),
         cmocka_unit_test(the_gauge_returns),
         cmocka_unit_test(memory_makes_the_next_start_sharp),
         cmocka_unit_test(a_broken_memory_is_not_taken),
