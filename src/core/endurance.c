@@ -10,7 +10,8 @@ static const double FINE_S = 1.0;       /* how exactly the end is found, and as 
 static const double FINE_SHARE = 0.002;
 static const double LONGEST_S = 400.0 * 86400.0; /* beyond this there is no end in sight */
 static const double BURST_SPREADS = 1.5;         /* a burst: this many spreads above the mean */
-static const double LOAD_AHEAD = 0.08;           /* the mean load of the time to come, as a share */
+static const int BURST_HALVINGS = 6;
+static const double LOAD_AHEAD = 0.08;     /* the mean load of the time to come, as a share */
 static const double IDLE_h = 1e-4;         /* a load under this many capacities an hour is none */
 static const double LEAST_SPREADS = 1.645; /* 5th percentile of the normal distribution */
 static const double TAPER_h = 0.05; /* charging ends at this current, common practice, no source */
@@ -102,9 +103,22 @@ static double run_up(struct run run) {
     return t_s < LONGEST_S ? t_s : ENDLESS;
 }
 
+/* The unit runs in this state, bursts and all: a burst that could not be is estimated too high. */
+static void hold_burst(struct run *run) {
+    struct cell_point point;
+    double current_A;
+
+    point_at(run, run->state.charge, &point);
+    for (int i = 0; i < BURST_HALVINGS && at_end(run, &point, &current_A) == CAUSE_FLOOR; i++)
+        run->burst_W *= 0.5;
+}
+
 static double worse(struct run run, double left_s, double *spread_s2) {
     enum cause cause;
-    double less_s = fmax(left_s - run_down(run, &cause), 0.0);
+    double less_s;
+
+    hold_burst(&run);
+    less_s = fmax(left_s - run_down(run, &cause), 0.0);
 
     return *spread_s2 += less_s * less_s;
 }
@@ -142,6 +156,7 @@ void endurance_compute(const struct cell *cell, const struct tracker_estimate *n
     if (run.power_W < -idle_W) {
         ret->full_s = run_up(run);
     } else if (run.power_W > idle_W) {
+        hold_burst(&run);
         ret->left_s = run_down(run, &ret->ends_by);
         ret->left_least_s = least_of(&run, now, ret->left_s);
     }

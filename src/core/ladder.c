@@ -6,7 +6,7 @@
 #include <math.h>
 
 /* least is trusted only near the end: a wide start must not order a stop with hours to go. */
-static const double KEEP_REACH = 10.0;
+static const double KEEP_REACH = 5.0;
 
 static const struct ladder_hold NOT_HELD = {-1, 0};
 

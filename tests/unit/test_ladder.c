@@ -183,7 +183,7 @@ static void keep_needs_least_and_a_near_end(void **unused) {
     ladder_init(&l, &CONFIG, 0);
     in.left_least_s = 0.0; /* a wide start: hours expected, nothing sure */
     assert_int_equal(run(&l, in, &t_s, 1000), STAGE_AMPLE);
-    in.left_s = 600.0;
+    in.left_s = 500.0;
     in.left_least_s = 119.0;
     assert_int_equal(run(&l, in, &t_s, 32), STAGE_EDGE);
     assert_int_equal(l.cause, CAUSE_KEEP);
