@@ -163,7 +163,7 @@ static bool leads_to(const char *path, const char *node) {
 bool gauge_concerns(const struct gauge *gauge, const struct hotplug_event *event) {
     struct serial_identity wanted;
     if (gauge_is_open(gauge))
-        return leads_to(gauge->port.node, event->node);
+        return strcmp(gauge->port.node, event->node) == 0;
     if (serial_identity_parse(gauge->config.device, &wanted))
         return serial_identity_matches(&wanted, event->vendor, event->product, event->serial);
     return leads_to(gauge->config.device, event->node);
