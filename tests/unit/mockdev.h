@@ -32,7 +32,7 @@ static inline bool mockdev_ready(char **argv) {
              asan ? ":" : "");
     setenv("ASAN_OPTIONS", options, 1);
     setenv("LD_PRELOAD", preload, 1);
-    execv("/proc/self/exe", argv);
+    execv(argv[0], argv);
     return false;
 }
 
