@@ -148,11 +148,11 @@ static void grow_wild(struct watch_pack *pack) {
 }
 
 static void predict_to(struct watch_pack *pack, const struct cell *cell, int64_t t_boot_us) {
-    double left_s = span_s(pack->t_state_us, t_boot_us);
-    double step_s = fmax(STEP_LONGEST_S, left_s / STEPS_MOST);
+    double gap_s = span_s(pack->t_state_us, t_boot_us);
+    int steps = (int)fmin(ceil(gap_s / STEP_LONGEST_S), STEPS_MOST);
 
-    for (; left_s > 0.0; left_s -= step_s)
-        tracker_predict(&pack->tracker, cell, fmin(left_s, step_s));
+    for (int i = 0; i < steps; i++)
+        tracker_predict(&pack->tracker, cell, gap_s / steps);
     pack->t_state_us = t_boot_us;
 }
 
