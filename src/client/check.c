@@ -3,7 +3,6 @@
 
 #include "client/words.h"
 #include "util/text.h"
-#include "util/units.h"
 
 #include <math.h>
 #include <string.h>
@@ -45,17 +44,19 @@ static void add_words(const struct view *v, const char *old, char *ret, size_t *
     if (*v->unit)
         text_append(ret, CHECK_SIZE, n, "%s ", v->unit);
     text_append(ret, CHECK_SIZE, n, "%s", v->stage);
-    if (v->blind)
+    if (v->blind && isnan(v->age_s))
+        text_append(ret, CHECK_SIZE, n, ", blind");
+    else if (v->blind)
         text_append(ret, CHECK_SIZE, n, ", blind for %s", words_age(v->age_s, word, sizeof(word)));
     if (isnan(v->charge))
         text_append(ret, CHECK_SIZE, n, ", charge not known");
     else
         text_append(ret, CHECK_SIZE, n, ", charge %s", words_share(v->charge, word, sizeof(word)));
     if (!isnan(v->left_s)) /* "no end" for an endless one */
-        text_append(ret, CHECK_SIZE, n, ", left %s", units_duration(v->left_s, word, sizeof(word)));
+        text_append(ret, CHECK_SIZE, n, ", left %s", words_span(v->left_s, word, sizeof(word)));
     if (isfinite(v->left_least_s))
         text_append(ret, CHECK_SIZE, n, ", at least %s",
-                    units_duration(v->left_least_s, word, sizeof(word)));
+                    words_span(v->left_least_s, word, sizeof(word)));
     for (size_t i = 0; i < v->n_alerts && i < VIEW_ALERTS; i++)
         text_append(ret, CHECK_SIZE, n, "%s%s", i ? ", " : ", alerts: ", v->alert[i].name);
     if (old)

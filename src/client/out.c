@@ -1,7 +1,7 @@
 /* stdout, the environment, the age of a status. */
 #include "client/out.h"
 
-#include "util/units.h"
+#include "client/words.h"
 
 #include <errno.h>
 #include <math.h>
@@ -62,7 +62,7 @@ const char *out_old(const struct view *view, int64_t now_boot_us, char buf[OUT_O
         return NULL;
     if (age_s > 0)
         snprintf(buf, OUT_OLD_TEXT, "written %s ago: brinkd has stopped or hangs",
-                 units_duration(age_s, (char[64]){0}, 64));
+                 words_span(age_s, (char[64]){0}, 64));
     else
         snprintf(buf, OUT_OLD_TEXT, "written in another boot or on another machine: age not known");
     return buf;

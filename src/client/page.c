@@ -6,7 +6,6 @@
 
 #include "client/words.h"
 #include "util/text.h"
-#include "util/units.h"
 
 #include <math.h>
 #include <stdarg.h>
@@ -15,9 +14,9 @@
 
 enum {
     LABEL_LEAST = 8,
-    LABEL_MOST = 16,
+    LABEL_MOST = 12,
     GAP = 2,
-    VALUE = 32, /* columns before the bar, and before what the time left is based on */
+    VALUE = 30, /* columns before the bar, and before what the time left is based on */
     BAR_MOST = 32,
     BAR_LEAST = 12,
     ALERT_LINES = 3,
@@ -239,7 +238,7 @@ static void put_why(struct page *page) {
         {"left", "time left at its limit"},
         {"keep", "time left at what a clean stop needs"},
         {"floor", "terminal voltage under the floor"},
-        {"blind", "gauge silent, and at its cautious end the model is at the cutoff"},
+        {"blind", "gauge silent, and the model's cautious end at the cutoff"},
     };
     const struct view *v = page->view;
     struct text t = {0};
@@ -268,7 +267,7 @@ static void put_blind(struct page *page) {
     else if (is(v->gauge.state, "lost") || is(v->gauge.state, "absent"))
         add(&t, "gauge gone, last reading %s ago", age);
     else if (alerted(v, "reading-impossible"))
-        add(&t, "nothing believable from the gauge for %s", age);
+        add(&t, "nothing believable for %s", age);
     else
         add(&t, "gauge silent for %s", age);
     add(&t, "%s", isnan(v->charge) ? "" : ": going by the model");
@@ -360,11 +359,11 @@ static void put_left(struct page *page) {
                  is(v->flow, "charging") ? "no end in sight while charging" : "no end in sight", 1);
         return;
     }
-    add(&t, "%s, ", units_duration(v->left_s, left, sizeof(left)));
+    add(&t, "%s, ", words_span(v->left_s, left, sizeof(left)));
     if (isnan(v->left_least_s))
         add(&t, "least not known");
     else
-        add(&t, "at least %s", units_duration(v->left_least_s, left, sizeof(left)));
+        add(&t, "at least %s", words_span(v->left_least_s, left, sizeof(left)));
     basis(page, &based);
     if (based.n)
         add(&t, "%*s%s", t.n + 2 < VALUE ? (int)(VALUE - t.n) : 2, "", based.s);
@@ -401,7 +400,7 @@ static void put_next(struct page *page) {
     if (is(v->stage, "leaving"))
         item(&t, "%s", leaving_words(v->request));
     else if (is(v->stage, "edge") && !isnan(v->grace_left_s))
-        item(&t, "leaving in %s", units_duration(v->grace_left_s, left, sizeof(left)));
+        item(&t, "leaving in %s", words_span(v->grace_left_s, left, sizeof(left)));
     else if (is(v->stage, "edge"))
         item(&t, "leaving when the grace time is over");
     else {
@@ -448,7 +447,7 @@ static void put_change(struct page *page) {
     struct text t = {0};
 
     if (is(v->stage, "leaving"))
-        add(&t, "nothing takes that back");
+        add(&t, "nothing takes this stage back");
     else if (is(v->stage, "edge"))
         add(&t, "unless an adapter lifts the pack before");
     else if (is(v->stage, "reserve") && is(v->flow, "charging")) {
@@ -476,7 +475,7 @@ static void current_item(struct text *t, const struct view_pack *pack) {
     if (isnan(pack->current_A))
         return;
     words_value(fabs(pack->current_A), "A", 2, 0.1, value, sizeof(value));
-    item(t, "%s%s%s", pack->current_A < 0 ? "charging " : "", value,
+    item(t, "%s%s%s", value, pack->current_A < 0 ? " in" : "",
          is(pack->current_from, "model")   ? " by the model"
          : is(pack->current_from, "gauge") ? " measured"
                                            : "");
@@ -532,7 +531,7 @@ static void put_gauge(struct page *page) {
         counted(&t, g->lines, "line", "lines");
     counted(&t, g->refused, "impossible", "impossible");
     counted(&t, g->repeated, "repeated", "repeated");
-    put_text(page, "gauge", t.s, 1);
+    put_text(page, "gauge", t.s, page->view->n_packs > 2 ? 1 : 2);
 }
 
 /* ---- alerts -----------------------------------------------------------------------------------

@@ -3,7 +3,6 @@
 
 #include "client/words.h"
 #include "util/text.h"
-#include "util/units.h"
 
 #include <math.h>
 #include <string.h>
@@ -218,7 +217,7 @@ static bool special(const struct name *name, const struct view *v, char *buf, si
         return true;
     case SHAPE_HELD:
         if (!isnan(held_s))
-            units_duration(held_s, buf, size);
+            words_span(held_s, buf, size);
         return true;
     case SHAPE_HELD_S:
         if (!isnan(held_s))
@@ -244,7 +243,7 @@ static void number(enum shape shape, double value, char *buf, size_t size) {
         words_share(value, buf, size);
         break;
     case SHAPE_DURATION:
-        units_duration(value, buf, size);
+        words_span(value, buf, size);
         break;
     case SHAPE_AGE:
         words_age(value, buf, size);

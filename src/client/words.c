@@ -8,7 +8,11 @@
 #include <string.h>
 #include <time.h>
 
-enum { WIDE_FROM = 0x1100, NOT_A_CHARACTER = 0x7FFFFFFF };
+enum { WIDE_FROM = 0x1100, ELLIPSIS = 0x2026, NOT_A_CHARACTER = 0x7FFFFFFF };
+
+static size_t columns_of(uint32_t c) {
+    return c >= WIDE_FROM && c != ELLIPSIS ? 2 : 1;
+}
 
 /* One character of UTF-8 (RFC 3629: shortest form, no surrogates, up to U+10FFFF). Returns its
  * bytes; what is none is one byte and NOT_A_CHARACTER. */
@@ -78,7 +82,7 @@ size_t words_fit(const char *text, size_t columns) {
     while (i < length) {
         uint32_t c;
         size_t n = next_character((const unsigned char *)text + i, length - i, &c);
-        used += c >= WIDE_FROM ? 2 : 1;
+        used += columns_of(c);
         if (used > columns)
             break;
         i += n;
@@ -92,14 +96,14 @@ size_t words_columns(const char *text) {
     for (size_t i = 0; i < length;) {
         uint32_t c;
         i += next_character((const unsigned char *)text + i, length - i, &c);
-        used += c >= WIDE_FROM ? 2 : 1;
+        used += columns_of(c);
     }
     return used;
 }
 
 void words_shorten(const char *text, size_t columns, bool unicode, char *ret, size_t size) {
     const char *gap = unicode ? "\u2026" : "..";
-    size_t room = columns - 2; /* the ellipsis counts two, see words_columns */
+    size_t room = columns - words_columns(gap);
     const char *tail = text;
 
     if (words_columns(text) <= columns) {
@@ -133,17 +137,10 @@ char *words_share(double share, char *buf, size_t size) {
     return words_value(share * 100, "%", 0, 0, buf, size);
 }
 
-char *words_age(double seconds, char *buf, size_t size) {
-    if (!(seconds >= 0 && seconds < 10))
-        return units_duration(seconds, buf, size);
-    snprintf(buf, size, "%.1f s", seconds);
-    return buf;
-}
-
 char *words_span(double seconds, char *buf, size_t size) {
     static const char *const zeros[] = {" 00 s", " 00", " 0 h"};
 
-    units_duration(seconds, buf, size);
+    units_duration(seconds >= 600 ? floor(seconds / 60) * 60 : seconds, buf, size);
     size_t n = strlen(buf);
     for (size_t i = 0; i < sizeof(zeros) / sizeof(zeros[0]); i++) {
         size_t z = strlen(zeros[i]);
@@ -152,6 +149,13 @@ char *words_span(double seconds, char *buf, size_t size) {
             break;
         }
     }
+    return buf;
+}
+
+char *words_age(double seconds, char *buf, size_t size) {
+    if (!(seconds >= 0 && seconds < 10))
+        return words_span(seconds, buf, size);
+    snprintf(buf, size, "%.1f s", seconds);
     return buf;
 }
 
@@ -202,7 +206,7 @@ static char *when(const char *clock_word, const char *span_word, int64_t moment,
         clock_words(moment, sign * s, text, sizeof(text)))
         snprintf(buf, size, "%s %s", clock_word, text);
     else
-        snprintf(buf, size, "%s %s", span_word, units_duration(s, (char[64]){0}, 64));
+        snprintf(buf, size, "%s %s", span_word, words_span(s, (char[64]){0}, 64));
     return buf;
 }
 

@@ -13,7 +13,7 @@
 void words_clean(const char *text, size_t length, bool ascii, char *ret, size_t size);
 
 /* The columns that clean text takes on a terminal, at most: characters from U+1100 on count two
- * (UAX #11 has wide ones from there), all before count one. */
+ * (UAX #11 has wide ones from there) but for the ellipsis, all before count one. */
 size_t words_columns(const char *text);
 
 /* The bytes of the longest beginning of clean text that takes at most so many columns. */
@@ -31,10 +31,11 @@ char *words_value(double value, const char *unit, int decimals, double milli_bel
 /* "63 %" of a share; whole percent. "-" for NaN. */
 char *words_share(double share, char *buf, size_t size);
 
-/* Below ten seconds with one decimal ("0.4 s"), else units_duration. */
+/* Below ten seconds with one decimal ("0.4 s"), else words_span. */
 char *words_age(double seconds, char *buf, size_t size);
 
-/* units_duration without the zeros of a whole span: "1 h", "2 min". For limits. */
+/* units_duration as far as it is worth telling: no seconds from ten minutes on, no zeros of a whole
+ * span: "1 h", "50 min", "2 min 10 s". */
 char *words_span(double seconds, char *buf, size_t size);
 
 /* The moment `written` (RFC 3339, UTC, seconds) as seconds since 1970, or -1 when it is not to be
