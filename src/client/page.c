@@ -23,7 +23,7 @@ enum {
     TEXT = 1024
 };
 
-/* Select graphic rendition, ECMA-48: bold, underlined, inverse. Colours proper are left to the
+/* Select graphic rendition, ECMA-48: bold, inverse. Colours proper are left to the
  * person's terminal. */
 #define BOLD    "\033[1m"
 #define INVERSE "\033[1;7m"
@@ -139,7 +139,10 @@ static void put_line(struct page *page, const struct row *row, const char *text,
         sgr(page, first && row->label_sgr ? PLAIN : NULL), (int)space, "");
     if (marked)
         put(page, "%s%.*s%s", sgr(page, row->sgr), (int)marked, text, sgr(page, PLAIN));
-    put(page, "%.*s%s\n", (int)(n - marked), text + marked, gap);
+    put(page, "%.*s%s", (int)(n - marked), text + marked, gap);
+    while (page->length > 0 && page->out[page->length - 1] == ' ')
+        page->length--;
+    put(page, "\n");
     page->lines++;
 }
 
@@ -547,7 +550,7 @@ static void put_more_alerts(struct page *page, size_t from) {
     for (size_t i = from; i < v->n_alerts && i < VIEW_ALERTS; i++)
         add(&t, "%s%s", i > from ? ", " : "", v->alert[i].name);
     put_row(page, &(struct row){.label = from ? "" : "alert",
-                                .label_sgr = BOLD,
+                                .label_sgr = from ? NULL : BOLD,
                                 .text = t.s,
                                 .most = 1,
                                 .breaks = AT_SPACES});

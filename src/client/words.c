@@ -122,14 +122,15 @@ char *words_value(double value, const char *unit, int decimals, double milli_bel
     bool milli = fabs(value) < milli_below && fabs(value) * 1000 >= 0.5;
     double shown = milli ? value * 1000 : value;
     int d = milli ? 0 : decimals;
+    char number[400]; /* the largest double has 309 digits */
 
     if (isnan(value)) {
         snprintf(buf, size, "-");
         return buf;
     }
-    if (fabs(shown) < 0.5 * pow(10, -d))
-        shown = 0;
-    snprintf(buf, size, "%.*f %s%s", d, shown + 0.0, milli ? "m" : "", unit);
+    int n = snprintf(number, sizeof(number), "%.*f", d, shown);
+    bool minus_nothing = number[0] == '-' && (int)strspn(number + 1, "0.") == n - 1;
+    snprintf(buf, size, "%s %s%s", number + minus_nothing, milli ? "m" : "", unit);
     return buf;
 }
 
