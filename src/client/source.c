@@ -17,7 +17,7 @@
 #include <sys/un.h>
 #include <sysexits.h>
 
-enum { ID_STATUS = 1, ID_FOLLOW = 2, RPC_EARLY = -32001 };
+enum { ID_STATUS = 1, ID_FOLLOW = 2, RPC_BUSY = -32000, RPC_EARLY = -32001 };
 static const double answer_wait_s = 5;
 static const char ask_status[] = "{\"jsonrpc\":\"2.0\",\"id\":1,\"method\":\"status\"}\n";
 static const char ask_follow[] = "{\"jsonrpc\":\"2.0\",\"id\":1,\"method\":\"status\"}\n"
@@ -138,21 +138,16 @@ static int open_socket(const char *path, struct trouble *trouble, int *ret) {
     return 0;
 }
 
-static int ask(const struct follower *f, const char *request, size_t length,
-               struct trouble *trouble) {
+/* A peer that has closed may have said why before: what it said is read next, so a failure to send
+ * is told there. */
+static void ask(const struct follower *f, const char *request, size_t length) {
     while (length > 0) {
         ssize_t n = send(f->fd, request, length, MSG_NOSIGNAL);
-        if (n < 0 && errno == EINTR)
-            continue;
-        if (n < 0)
-            return trouble_set(trouble, EX_UNAVAILABLE,
-                               "brinkd closed the connection at %s: %s. See `systemctl status "
-                               "brinkd`",
-                               f->path, strerror(errno));
-        request += n;
-        length -= (size_t)n;
+        if (n < 0 && errno != EINTR)
+            return;
+        request += n > 0 ? n : 0;
+        length -= n > 0 ? (size_t)n : 0;
     }
-    return 0;
 }
 
 static int open_follower(const char *path, const char *request, size_t length,
@@ -163,10 +158,11 @@ static int open_follower(const char *path, const char *request, size_t length,
         return trouble_set(trouble, EX_OSERR, "out of memory");
     f->fd = -1;
     f->path = path;
-    if (open_socket(path, trouble, &f->fd) != 0 || ask(f, request, length, trouble) != 0) {
+    if (open_socket(path, trouble, &f->fd) != 0) {
         follower_free(f);
         return trouble->code;
     }
+    ask(f, request, length);
     *ret = f;
     return 0;
 }
@@ -231,6 +227,11 @@ static int error_trouble(const json_t *error, const char *path, struct trouble *
     if (code == RPC_EARLY)
         return trouble_set(trouble, EX_UNAVAILABLE,
                            "brinkd has no report yet: it has just started. Try again in a moment");
+    if (code == RPC_BUSY)
+        return trouble_set(trouble, EX_TEMPFAIL,
+                           "brinkd at %s has as many clients as it takes. Close some, or read the "
+                           "status file instead",
+                           path);
     words_clean(message ? message : "", message ? strlen(message) : 0, false, clean, sizeof(clean));
     return trouble_set(trouble, EX_PROTOCOL,
                        "brinkd at %s refuses: %s (%" JSON_INTEGER_FORMAT "). Use a brink and a "

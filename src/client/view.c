@@ -220,7 +220,7 @@ int view_parse(const char *text, size_t length, const char *where, json_t **ret,
     char clean[128];
 
     json_object_seed(1); /* the objects are small and few: no need to ask the kernel for chance */
-    json_t *json = json_loadb(text, length, JSON_REJECT_DUPLICATES, &error);
+    json_t *json = json_loadb(text, length, JSON_REJECT_DUPLICATES | JSON_ALLOW_NUL, &error);
     if (json) {
         *ret = json;
         return 0;
