@@ -123,8 +123,8 @@ static int show_once(struct show *show, struct trouble *trouble) {
         return tell(show->options, trouble);
     if (show->options->command == COMMAND_CHECK || !show->style.old)
         return code;
-    trouble_set(trouble, EX_UNAVAILABLE, "what is shown is old, %s. See `systemctl status brinkd`",
-                show->style.old);
+    trouble_fill(trouble, EX_UNAVAILABLE, "what is shown is old, %s. See `systemctl status brinkd`",
+                 show->style.old);
     return tell(show->options, trouble);
 }
 

@@ -69,7 +69,7 @@ int source_file(const char *path, struct source *ret, struct trouble *trouble) {
         source_done(&s);
         return trouble->code;
     }
-    while (length > 0 && memchr(" \t\r\n", s.text[length - 1], 4))
+    while (length > 0 && s.text[length - 1] != '}') /* what follows is white space */
         length--;
     s.object = s.envelope;
     s.object_text = s.text;
@@ -158,9 +158,10 @@ static int open_follower(const char *path, const char *request, size_t length,
         return trouble_set(trouble, EX_OSERR, "out of memory");
     f->fd = -1;
     f->path = path;
-    if (open_socket(path, trouble, &f->fd) != 0) {
+    int code = open_socket(path, trouble, &f->fd);
+    if (code) {
         follower_free(f);
-        return trouble->code;
+        return code;
     }
     ask(f, request, length);
     *ret = f;
@@ -252,10 +253,10 @@ static enum meaning understand(struct source *s, size_t length, bool follows,
     const char *key = method ? "params" : "result";
 
     if (!json_is_string(version) || strcmp(json_string_value(version), "2.0") != 0) {
-        trouble_set(trouble, EX_PROTOCOL,
-                    "what answers at %s is no brinkd: no JSON-RPC 2.0. Name "
-                    "the right socket with --socket",
-                    s->where);
+        trouble_fill(trouble, EX_PROTOCOL,
+                     "what answers at %s is no brinkd: no JSON-RPC 2.0. Name "
+                     "the right socket with --socket",
+                     s->where);
         return MEANS_ERROR;
     }
     if (error && !json_is_null(error)) {
@@ -270,10 +271,10 @@ static enum meaning understand(struct source *s, size_t length, bool follows,
     s->object_text = span_member(s->text, length, key, &s->object_length);
     if (s->object && s->object_text)
         return MEANS_STATUS;
-    trouble_set(trouble, EX_PROTOCOL,
-                "what answers at %s is no brinkd: no \"%s\" in its answer. "
-                "Name the right socket with --socket",
-                s->where, key);
+    trouble_fill(trouble, EX_PROTOCOL,
+                 "what answers at %s is no brinkd: no \"%s\" in its answer. "
+                 "Name the right socket with --socket",
+                 s->where, key);
     return MEANS_ERROR;
 }
 
@@ -284,7 +285,7 @@ static enum meaning read_line(const struct follower *f, struct source *ret,
     enum meaning meaning = MEANS_ERROR;
 
     if (!s.text) {
-        trouble_set(trouble, EX_OSERR, "out of memory");
+        trouble_fill(trouble, EX_OSERR, "out of memory");
         return MEANS_ERROR;
     }
     memcpy(s.text, f->buf, f->line);
@@ -312,17 +313,20 @@ int follower_next(struct follower *follower, double wait_s, struct source *ret,
 }
 
 int follower_open(const char *path, struct follower **ret, struct trouble *trouble) {
-    if (open_follower(path, ask_follow, sizeof(ask_follow) - 1, ret, trouble) == 0)
+    int code = open_follower(path, ask_follow, sizeof(ask_follow) - 1, ret, trouble);
+
+    if (!code)
         (*ret)->follows = true;
-    return trouble->code;
+    return code;
 }
 
 int source_socket(const char *path, struct source *ret, struct trouble *trouble) {
-    struct follower *f;
+    struct follower *f = NULL;
 
-    if (open_follower(path, ask_status, sizeof(ask_status) - 1, &f, trouble) != 0)
-        return trouble->code;
-    follower_next(f, answer_wait_s, ret, trouble);
+    int code = open_follower(path, ask_status, sizeof(ask_status) - 1, &f, trouble);
+    if (code)
+        return code;
+    code = follower_next(f, answer_wait_s, ret, trouble);
     follower_free(f);
-    return trouble->code;
+    return code;
 }

@@ -4,8 +4,12 @@
 #include <stdbool.h>
 #include <string.h>
 
+static bool is_space(char c) {
+    return c == ' ' || c == '\t' || c == '\r' || c == '\n';
+}
+
 static size_t skip_space(const char *text, size_t length, size_t i) {
-    while (i < length && memchr(" \t\r\n", text[i], 4))
+    while (i < length && is_space(text[i]))
         i++;
     return i;
 }
@@ -22,7 +26,7 @@ static size_t skip_value(const char *text, size_t length, size_t i) {
 
     while (i < length) {
         char c = text[i];
-        if (depth == 0 && memchr(",}] \t\r\n", c, 7))
+        if (depth == 0 && (c == ',' || c == '}' || c == ']' || is_space(c)))
             return i;
         if (c == '"') {
             i = skip_string(text, length, i);

@@ -314,7 +314,7 @@ static int find_pack(const char *name, const struct view *v, const struct view_p
 
 static int put_placeholder(const struct placeholder *p, const struct view *v, struct line *line,
                            struct trouble *trouble) {
-    const struct view_pack *pack;
+    const struct view_pack *pack = NULL;
     char text[VIEW_TEXT];
     int code = find_pack(p->pack, v, &pack, trouble);
 
@@ -332,7 +332,7 @@ static int walk(const char *format, const struct view *v, struct line *line,
 
     while (*at) {
         size_t plain = strcspn(at, "{");
-        struct placeholder p;
+        struct placeholder p = {0};
         if (plain == 0 && at[1] != '{') {
             at++;
             int code = next_placeholder(format, &at, &p, trouble);

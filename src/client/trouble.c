@@ -4,12 +4,11 @@
 #include <stdarg.h>
 #include <stdio.h>
 
-int trouble_set(struct trouble *trouble, int code, const char *format, ...) {
+void trouble_fill(struct trouble *trouble, int code, const char *format, ...) {
     va_list args;
 
     va_start(args, format);
     vsnprintf(trouble->text, sizeof(trouble->text), format, args);
     va_end(args);
     trouble->code = code;
-    return code;
 }

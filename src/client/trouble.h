@@ -9,6 +9,9 @@ struct trouble {
     char text[TROUBLE_TEXT];
 };
 
-/* Fills trouble and returns code. */
-int trouble_set(struct trouble *trouble, int code, const char *format, ...)
+/* Fills trouble. */
+void trouble_fill(struct trouble *trouble, int code, const char *format, ...)
     __attribute__((format(printf, 3, 4)));
+
+/* Fills trouble and is code, a constant other than 0: for `return trouble_set(...)`. */
+#define trouble_set(trouble, code, ...) (trouble_fill(trouble, code, __VA_ARGS__), (code))

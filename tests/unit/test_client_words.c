@@ -167,18 +167,27 @@ static void nothing_is_minus_nothing(void **state) {
         assert_string_not_equal(buf, "-0.00 A");
         assert_string_not_equal(buf, "-0 mA");
     }
-    assert_string_equal(words_value(NAN, "V", 2, 0, buf, SIZE), "-");
+    assert_string_equal(words_value((double)NAN, "V", 2, 0, buf, SIZE), "-");
     assert_string_equal(words_share(0.634, buf, SIZE), "63 %");
-    assert_string_equal(words_share(NAN, buf, SIZE), "-");
+    assert_string_equal(words_share((double)NAN, buf, SIZE), "-");
 }
 
 static void spans_tell_what_is_worth_telling(void **state) {
     static const struct {
         double s;
         const char *words;
-    } rows[] = {{0, "0 s"},          {42, "42 s"},        {120, "2 min"},   {130, "2 min 10 s"},
-                {599, "9 min 59 s"}, {659, "10 min"},     {3600, "1 h"},    {20400, "5 h 40"},
-                {86400, "1 d"},      {100000, "1 d 3 h"}, {NAN, "unknown"}, {INFINITY, "no end"}};
+    } rows[] = {{0, "0 s"},
+                {42, "42 s"},
+                {120, "2 min"},
+                {130, "2 min 10 s"},
+                {599, "9 min 59 s"},
+                {659, "10 min"},
+                {3600, "1 h"},
+                {20400, "5 h 40"},
+                {86400, "1 d"},
+                {100000, "1 d 3 h"},
+                {(double)NAN, "unknown"},
+                {(double)INFINITY, "no end"}};
     char buf[SIZE];
 
     (void)state;
@@ -229,7 +238,7 @@ static void without_a_believable_clock_spans_are_told(void **state) {
     (void)state;
     assert_string_equal(words_since(-1, 20400, buf, SIZE), "for 5 h 40");
     assert_string_equal(words_about(-1, 20400, buf, SIZE), "in 5 h 40");
-    assert_string_equal(words_since(-1, NAN, buf, SIZE), "");
+    assert_string_equal(words_since(-1, (double)NAN, buf, SIZE), "");
     assert_string_equal(words_about(1764569520, 1e12, buf, SIZE), "in over 9999 d");
     assert_string_equal(words_since(1764569520, -5, buf, SIZE), "for 0 s");
 }
