@@ -42,7 +42,7 @@ static int tell(const struct options *options, const struct trouble *trouble) {
 static int tell_about(const struct options *options, struct trouble *trouble) {
     static const char version[] = "brink " BRINK_VERSION "\n";
     char names[8192];
-    const char *text = options_help();
+    const char *text = brink_help();
 
     if (options->version)
         text = version;

@@ -30,7 +30,7 @@ struct reading {
     const char *status, *socket;
 };
 
-const char *options_help(void) {
+const char *brink_help(void) {
     return "brink tells how the packs of this unit stand. brinkd(8) must run.\n"
            "\n"
            "  brink                      a page for people\n"

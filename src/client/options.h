@@ -21,4 +21,4 @@ struct options {
 int options_read(int argc, char *const *argv, struct options *ret, struct trouble *trouble);
 
 /* The help of `brink --help`. */
-const char *options_help(void);
+const char *brink_help(void);
