@@ -13,8 +13,8 @@ from scipy.optimize import brentq
 
 HEAD = """/* Made by tests/unit/vectors/make_ocv.py; `make vectors` makes it again and compares.
  *
- * Values, slopes and inverses of SciPy's PchipInterpolator on the tables of test_ocv; the inverse is
- * its value solved by Brent's method (scipy.optimize.brentq). */
+ * Values, slopes and inverses of SciPy's PchipInterpolator on the tables of test_ocv; the inverse
+ * is its value solved by Brent's method (scipy.optimize.brentq). */
 #pragma once
 
 #include <stddef.h>
