@@ -1,7 +1,7 @@
 /* The socket server. What goes out to followers is written once into a slot that all of them share;
- * a slot is free again when the last of them has sent it. A client that falls behind is dropped
- * after `missed` reports, so no begun message is older than that and missed + 2 slots are enough
- * for ever: the newest report, the one being written, and one for each age.
+ * a slot is free again when the last of them has sent it. A client that waits for room through
+ * `missed` reports is dropped, so no begun message is older than that, and missed + 2 slots are
+ * enough for ever: one for each age, the newest report, and the one being written.
  *
  * A client is served only while nothing waits to go out to it. Its event mask says what it waits
  * for: room to send (also when lines are left over from a turn), else bytes to read.
