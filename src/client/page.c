@@ -479,7 +479,7 @@ static void current_item(struct text *t, const struct view_pack *pack) {
         return;
     words_value(fabs(pack->current_A), "A", 2, 0.1, value, sizeof(value));
     item(t, "%s%s%s", value, pack->current_A < 0 ? " in" : "",
-         is(pack->current_from, "model")   ? " by the model"
+         is(pack->current_from, "model")   ? " by model"
          : is(pack->current_from, "gauge") ? " measured"
                                            : "");
 }

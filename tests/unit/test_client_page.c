@@ -47,16 +47,15 @@ static void says_not(const char *text, const char *words) {
 
 static void the_usual_page_as_a_whole(void **state) {
     (void)state;
-    assert_string_equal(
-        plain_json(sample_json()),
-        "heron     ample since 05:51, on pack since 05:59\n"
-        "charge    63 %   between 60 and 66\n"
-        "left      5 h 40, at least 4 h 55       at 3.1 W, to 8 % charge\n"
-        "next      reserve about 10:22, stop about 11:52\n"
-        "          reserve at 25 % charge or under 1 h left\n"
-        "main      3.71 V now, 3.79 V at rest, sag 81 mV, 0.84 A by the model, 11 C\n"
-        "rail      4.97 V\n"
-        "gauge     usb:1209:0001, 0.4 s ago, 3 bad lines of 29114\n");
+    assert_string_equal(plain_json(sample_json()),
+                        "heron     ample since 05:51, on pack since 05:59\n"
+                        "charge    63 %   between 60 and 66\n"
+                        "left      5 h 40, at least 4 h 55       at 3.1 W, to 8 % charge\n"
+                        "next      reserve about 10:22, stop about 11:52\n"
+                        "          reserve at 25 % charge or under 1 h left\n"
+                        "main      3.71 V now, 3.79 V at rest, sag 81 mV, 0.84 A by model, 11 C\n"
+                        "rail      4.97 V\n"
+                        "gauge     usb:1209:0001, 0.4 s ago, 3 bad lines of 29114\n");
 }
 
 static void a_bar_only_where_asked_for(void **state) {
