@@ -23,7 +23,7 @@ class Log:
     """One measured log. `gap_s`: a longer step starts a new run, taken as rested."""
 
     def __init__(self, path, capacity, gap_s=100.0, temp=None, weight=1.0, most=None,
-                 shift=False, skip_s=0.0, thin=1):
+                 shift=False, skip_s=0.0, until_s=np.inf, thin=1):
         col = data.columns(path)
         self.t, self.V, self.I = col["time_s"], col["voltage_V"], col["current_A"]
         self.z = 1.0 - col["charge_Ah"] / capacity
@@ -32,7 +32,7 @@ class Log:
         self.weight = weight * np.clip(np.gradient(self.t), 0.5, 60.0)
         if most is not None:  # rows with more current tell of a load no small computer has
             self.weight[np.abs(self.I) > most] = 0.0
-        self.weight[self.t < skip_s] = 0.0
+        self.weight[(self.t < skip_s) | (self.t > until_s)] = 0.0
         self.weight[np.arange(len(self.t)) % thin != 0] = 0.0
         step = np.diff(self.t)
         jump = np.abs(np.diff(self.z) * capacity + self.I[1:] * step / 3600.0) > 0.01

@@ -26,6 +26,8 @@ CELLS = os.path.join(os.path.dirname(os.path.abspath(__file__)), "../../conf/cel
 CURVE = [0, 0.5, 1, 2, 3, 4, 5, 6, 8, 10, 12.5, 15, 17.5, 20, 25, 30, 35, 40, 45, 50, 55, 60, 65, 70,
          75, 80, 85, 90, 95, 97.5, 100]
 POINTS = np.array([0, 3, 6, 10, 14, 18, 24, 32, 42, 52, 62, 72, 84, 95]) / 100
+# Where a curve taken under C/20 may be moved by what the rests of other logs say.
+MOVE = np.array([0, 2, 4, 7, 10, 14, 18, 24, 32, 42, 52, 62, 72, 84, 100]) / 100
 
 
 class Table:
@@ -93,8 +95,11 @@ def nmc(search):
     q = 2.7807
     log = log_of(NMC, q)
     ocv = data.table("ocv_measured", ["Kollmeyer et al. 2020"], "_25C_C20.csv", "ocv_dis_V")
+    # of the C/20 log the discharge and the hour of rest after it, not the charging branch
     problem = Problem([log(["LA92", "25degC"]), log(["profile 0.5C", "25degC"], weight=0.5),
-                       log(["profile 1C", "25degC"])], ocv, POINTS, rest_current=0.15)
+                       log(["profile 1C", "25degC"]),
+                       log(["C/20 dis", "25degC"], until_s=69400, weight=0.2)],
+                      ocv, POINTS, rest_current=0.15, ocv_points=MOVE, ocv_pull=0.1)
     found = fit(problem, search, 10, 300)
     energy = energy_of(found, [log(["short drive segment"]), log(["profile 0.5C", "ambient 0degC"]),
                                log(["profile 0.5C", "n10degC"])])
@@ -110,8 +115,9 @@ def nmc811(search):
     def log(words, **more):
         return Log(data.find("", [M50] + words), q, temp=23.0, **more)
     ocv = data.table("ocv_measured", [M50], "_C20.csv", "ocv_dis_V")
-    problem = Problem([log(["HPPC"], thin=2)], ocv, POINTS, rest_current=0.2425)
-    found = fit(problem, search, 20, 400)
+    problem = Problem([log(["HPPC"], thin=2)], ocv, POINTS, rest_current=0.2425, ocv_points=MOVE,
+                      ocv_pull=0.1)
+    found = fit(problem, search, 20, 300)
     return of_solution("nmc811-21700", q, found, WARM), log, [["UDDS"], ["profile C/20"]]
 
 
