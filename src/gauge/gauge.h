@@ -73,7 +73,7 @@ int gauge_read(struct gauge *gauge);
 int gauge_next(struct gauge *gauge, struct frame *ret);
 
 /* Writes text and a newline back, never waiting. text: one line of at most GAUGE_TELL_MAX - 2
- * characters, such as "stage=reserve charge=0.249". 0, or GAUGE_E_TELL, GAUGE_E_FULL, GAUGE_E_GONE.
+ * characters, such as "stage=reserve charge=25". 0, or GAUGE_E_TELL, GAUGE_E_FULL, GAUGE_E_GONE.
  * GAUGE_E_GONE does not close; the next gauge_read does. */
 int gauge_tell(struct gauge *gauge, const char *text);
 

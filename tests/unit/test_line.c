@@ -88,6 +88,36 @@ static void check_matches_or_line_is_refused(void **state) {
     assert_false(checked);
 }
 
+/* The example of brink-gauge(7), word for word but for where it prints to. */
+static int say(char *to, size_t size, unsigned code, unsigned long t_s) {
+    char line[48];
+    unsigned long mV = code * 5264UL / 1000; /* 1100 mV / 1024 * 4.9 */
+    snprintf(line, sizeof line, "v=%lu.%03lu t=%lu", mV / 1000, mV % 1000, t_s);
+    unsigned char crc = 0;
+    for (const char *c = line; *c; c++)
+        for (int bit = (crc ^= (unsigned char)*c, 8); bit > 0; bit--)
+            crc = (unsigned char)(crc << 1 ^ (crc & 0x80 ? 0x07 : 0));
+    return snprintf(to, size, "%s*%02X\n", line, crc);
+}
+
+static void example_of_the_manual(void **state) {
+    (void)state;
+    static const char shown[] = "v=3.712 i=0.84 c=11 t=1234*ED";
+    struct frame frame;
+    bool checked = false;
+    assert_int_equal(line_decode(shown, sizeof shown - 1, &frame, &checked), 0);
+    assert_true(checked);
+    for (unsigned code = 0; code < 1024; code++) {
+        char text[64];
+        int n = say(text, sizeof text, code, 100000UL * code);
+        assert_int_equal(line_decode(text, (size_t)n - 1, &frame, &checked), 0);
+        assert_true(checked);
+        double volts = code * 1.1 / 1024 * 4.9;
+        assert_true(fabs(value_of(&frame, "v") - volts) < 0.0015);
+        assert_same(frame.clock_s, 100000.0 * code);
+    }
+}
+
 static const struct {
     const char *text;
     enum line_fault fault;
@@ -436,6 +466,7 @@ int main(void) {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(plain_line),
         cmocka_unit_test(check_matches_or_line_is_refused),
+        cmocka_unit_test(example_of_the_manual),
         cmocka_unit_test(bad_lines_are_counted_by_kind_and_the_next_counts),
         cmocka_unit_test(nul_is_binary_and_excerpt_stays_printable),
         cmocka_unit_test(token_limits),
