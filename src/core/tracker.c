@@ -14,9 +14,9 @@
  * current, and gains that swing with the bursts turn their noise into a drift of the charge
  * (measured on a made-up load over an exact model: 23 % off after 3 h, 0.1 % without). What the sag
  * may be off is put into the bias instead. */
-static const double FAST_TAU_S = 15.0;       /* how long a burst of load lasts */
-static const double BIAS_TAU_S = 7200.0;     /* how long the curve is off in one direction */
-static const double MEAN_DRIFT_h = 0.30;     /* the mean load wanders by this share in an hour */
+static const double FAST_TAU_S = 15.0;   /* how long a burst of load lasts */
+static const double BIAS_CHARGE = 1.0;   /* the curve is off in one direction over so much charge */
+static const double MEAN_DRIFT_h = 0.30; /* the mean load wanders by this share in an hour */
 static const double SCALE_DRIFT_h = 0.06;    /* resistance: the same */
 static const double POLAR_SHARE = 0.15;      /* error of the RC pairs' final voltage */
 static const double VOLTAGE_NOISE_V = 0.004; /* a cell's reading: ADC step and ripple */
@@ -56,7 +56,7 @@ static void set_state(struct tracker *t, int i, double value, double sd) {
     t->P[i][i] = square(sd);
 }
 
-void tracker_init(struct tracker *tracker, const struct cell *cell, double typical_W, double temp_C,
+void tracker_init(struct tracker *tracker, double typical_W, double temp_C,
                   const struct tracker_prior *prior) {
     double power = isfinite(prior->power_W) ? prior->power_W : typical_W;
     double power_sd = isfinite(prior->power_sd_W) ? prior->power_sd_W : 0.5 * typical_W;
@@ -74,7 +74,15 @@ void tracker_init(struct tracker *tracker, const struct cell *cell, double typic
     set_state(tracker, TRACK_FAST, 0.0, 0.7 * typical_W);
     set_state(tracker, TRACK_SCALE, isfinite(prior->scale) ? prior->scale : 1.0,
               isfinite(prior->scale) ? prior->scale_sd : 0.2);
-    set_state(tracker, TRACK_BIAS, 0.0, cell->table.voltage_sd_V * cell->voltage_factor);
+}
+
+/* How far model and cell may lie apart for long: the curve, and the sag of the mean load. */
+static double bias_sd_V(const struct tracker *t, const struct cell *cell,
+                        const struct cell_point *point) {
+    double load_W = fmax(fabs(t->x[TRACK_MEAN]), 0.1 * t->typical_W);
+    double sag_V = (point->r0_ohm + point->r1_ohm + point->r2_ohm) * load_W / t->voltage_V;
+
+    return hypot(cell->table.voltage_sd_V * cell->voltage_factor, SAG_SHARE * sag_V);
 }
 
 /* The first voltage: where nothing else is known, the curve is read at the voltage behind the sag
@@ -97,6 +105,7 @@ static void start(struct tracker *t, const struct cell *cell, double voltage_V) 
         t->x[TRACK_CHARGE] = ocv_charge(&cell->table.ocv, nominal_V + sag_V);
     }
     t->voltage_V = voltage_V;
+    set_state(t, TRACK_BIAS, 0.0, bias_sd_V(t, cell, &point));
     t->started = true;
 }
 
@@ -152,8 +161,6 @@ static void add_noise(struct tracker *t, const struct cell *cell, const struct c
                       const struct transition *f, double dt_s) {
     double hours = dt_s / 3600.0, load_W = fmax(fabs(t->x[TRACK_MEAN]), 0.1 * t->typical_W);
     double current_A = load_W / t->voltage_V;
-    double bias_V = hypot(cell->table.voltage_sd_V * cell->voltage_factor,
-                          SAG_SHARE * (point->r0_ohm + point->r1_ohm + point->r2_ohm) * current_A);
     /* a burst that came and went between two samples leaves its charge behind */
     double unseen_As = sqrt(2.0 * FAST_TAU_S * dt_s * t->fast_var_W2) / t->voltage_V *
                        (1.0 - exp(-square(dt_s / FAST_TAU_S) / 6.0));
@@ -166,7 +173,7 @@ static void add_noise(struct tracker *t, const struct cell *cell, const struct c
     t->P[TRACK_MEAN][TRACK_MEAN] += square(MEAN_DRIFT_h * load_W) * hours;
     t->P[TRACK_FAST][TRACK_FAST] += (1.0 - square(f->fast)) * t->fast_var_W2;
     t->P[TRACK_SCALE][TRACK_SCALE] += square(SCALE_DRIFT_h) * hours;
-    t->P[TRACK_BIAS][TRACK_BIAS] += (1.0 - square(f->bias)) * square(bias_V);
+    t->P[TRACK_BIAS][TRACK_BIAS] += (1.0 - square(f->bias)) * square(bias_sd_V(t, cell, point));
 }
 
 static void fill_transition(const struct tracker *t, const struct cell *cell,
@@ -178,13 +185,13 @@ static void fill_transition(const struct tracker *t, const struct cell *cell,
     f->fade1 = exp(-dt_s / cell->table.tau1_s);
     f->fade2 = exp(-dt_s / cell->table.tau2_s);
     f->fast = exp(-dt_s / FAST_TAU_S);
-    f->bias = exp(-dt_s / BIAS_TAU_S);
     f->follow = 1.0 - exp(-dt_s / FOLLOW_S);
     /* the fast part fades within the step; this is its mean over the step */
     share = (1.0 - f->fast) * FAST_TAU_S / dt_s;
     current_A = (t->x[TRACK_MEAN] + share * t->x[TRACK_FAST]) * per_W;
     f->charge_mean = charge_A * per_W;
     f->charge_fast = share * f->charge_mean;
+    f->bias = exp(charge_A * fabs(current_A) / BIAS_CHARGE);
     f->u1_mean = scale * point->r1_ohm * (1.0 - f->fade1) * per_W;
     f->u1_fast = share * f->u1_mean;
     f->u1_scale = t->current_told ? point->r1_ohm * (1.0 - f->fade1) * current_A : 0.0;

@@ -49,7 +49,7 @@ struct tracker_estimate {
 };
 
 /* typical_W > 0: the load before anything is known. */
-void tracker_init(struct tracker *tracker, const struct cell *cell, double typical_W, double temp_C,
+void tracker_init(struct tracker *tracker, double typical_W, double temp_C,
                   const struct tracker_prior *prior);
 
 /* Time passes: dt_s > 0 under the learned load. Spread grows. */

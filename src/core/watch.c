@@ -213,7 +213,7 @@ static enum watch_verdict feed_pack(struct watch *watch, size_t i, struct pack_s
     }
     believe_others(pack, &watch->config, &config->cell, &sample);
     if (!pack->known)
-        tracker_init(&pack->tracker, &config->cell, config->typical_W, pack->temp_C, &pack->prior);
+        tracker_init(&pack->tracker, config->typical_W, pack->temp_C, &pack->prior);
     else
         predict_to(pack, &config->cell, t_boot_us);
     tracker_update(&pack->tracker, &config->cell, sample.voltage_V, sample.current_A, pack->temp_C);

@@ -32,7 +32,7 @@ static void trial_start(struct trial *t, double charge, const struct tracker_pri
     struct watch_config config = fen_config();
 
     t->fen = fen_pack(&config, charge, 2.4);
-    tracker_init(&t->tracker, &t->fen.cell, typical_W, 25.0, prior);
+    tracker_init(&t->tracker, typical_W, 25.0, prior);
 }
 
 static void trial_run(struct trial *t, int from_s, int to_s, bool current) {
@@ -69,7 +69,7 @@ static void one_step_agrees_with_the_scalar_filter(void **unused) {
     prior.charge = 0.5;
     prior.charge_sd = 0.1;
     prior.u1_V = prior.u2_V = 0.0;
-    tracker_init(&t, &cell, 1.0, 25.0, &prior);
+    tracker_init(&t, 1.0, 25.0, &prior);
     t.age_s = 1e6; /* long awake */
     tracker_update(&t, &cell, 3.81, UNKNOWN, 25.0);
     tracker_read(&t, &cell, &now);
