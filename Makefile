@@ -14,7 +14,7 @@ SHELL   := /bin/sh
 DEPS_BUILD := gcc libc6-dev pkg-config libsystemd-dev libudev-dev libserialport-dev libinih-dev \
               libjansson-dev
 DEPS_CHECK := clang clang-format clang-tidy cppcheck valgrind mandoc libcmocka-dev libgsl-dev \
-              libclang-rt-14-dev python3 python3-scipy systemd umockdev
+              libclang-rt-14-dev python3 python3-scipy strace systemd umockdev
 
 # ---- flags ------------------------------------------------------------------------------------
 WARN   := -Wall -Wextra -Wpedantic -Wshadow -Wconversion -Wdouble-promotion -Wstrict-prototypes \
