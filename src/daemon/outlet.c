@@ -181,7 +181,7 @@ static size_t render(struct manager *m) {
     struct report shown = m->report;
     struct status_context context = {
         .unit = m->config.unit.name,
-        .pid = getpid(),
+        .pid = m->outlet.pid,
         .t_real_us = clock_real_us(),
         .watch = &m->watch.config,
         .gauge = {.kind = gauge_kind_name((enum gauge_kind)m->config.gauge.kind),
@@ -327,7 +327,7 @@ static int open_server(struct manager *m) {
 int outlet_init(struct manager *m) {
     struct outlet *out = &m->outlet;
 
-    *out = (struct outlet){.told_stage = -1, .told_percent = UNKNOWN};
+    *out = (struct outlet){.pid = getpid(), .told_stage = -1, .told_percent = UNKNOWN};
     int r = statusfile_new(&out->file, m->config.files.status);
     if (r < 0) {
         log_error("status file %s: %s", m->config.files.status, strerrordesc_np(-r));

@@ -51,6 +51,7 @@ struct outlet {
     struct server *server; /* NULL when no socket could be had */
     struct statusfile *file;
     sd_event_source *stop_timer;
+    pid_t pid; /* ours; glibc asks the kernel each time */
     enum status_request request;
     enum stage stage;       /* as last logged */
     unsigned alerts;        /* enum status_alert: the daemon's own, now */

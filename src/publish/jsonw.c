@@ -29,14 +29,17 @@ static void put(struct jsonw *w, const char *text, size_t n) {
 }
 
 static void put_key(struct jsonw *w, const char *key) {
-    if (w->comma)
-        put(w, ",", 1);
+    size_t n = key ? strlen(key) : 0;
+    char *at = reserve(w, (size_t)w->comma + (key ? n + 3 : 0));
+
+    if (at && w->comma)
+        *at++ = ',';
     w->comma = true;
-    if (!key)
+    if (!at || !key)
         return;
-    put(w, "\"", 1);
-    put(w, key, strlen(key));
-    put(w, "\":", 2);
+    *at++ = '"';
+    memcpy(at, key, n);
+    memcpy(at + n, "\":", 2);
 }
 
 void jsonw_open(struct jsonw *w, const char *key, char bracket) {

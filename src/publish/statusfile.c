@@ -1,10 +1,11 @@
-/* The status file's writer. The directory stays open between writes, so that a write costs five
+/* The status file's writer. The directory stays open between writes, so that a write costs four
  * system calls; the temporary file is created afresh each time and never followed or shared. */
 #include "publish/statusfile.h"
 
 #include <errno.h>
 #include <fcntl.h>
 #include <limits.h>
+#include <stdbool.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -12,9 +13,12 @@
 #include <sys/uio.h>
 #include <unistd.h>
 
+enum { MODE = 0644 };
+
 struct statusfile {
     char *dir;
-    int dir_fd; /* -1 = to be opened */
+    int dir_fd;     /* -1 = to be opened */
+    bool mode_kept; /* files made in it get our mode: no umask or default ACL takes of it */
     char name[NAME_MAX + 1], temp[NAME_MAX + 1];
 };
 
@@ -22,6 +26,7 @@ static void close_dir(struct statusfile *file) {
     if (file->dir_fd >= 0)
         close(file->dir_fd);
     file->dir_fd = -1;
+    file->mode_kept = false;
 }
 
 struct statusfile *statusfile_free(struct statusfile *file) {
@@ -66,7 +71,7 @@ static int create(struct statusfile *file) {
     if (file->dir_fd < 0)
         return -errno;
     int fd = openat(file->dir_fd, file->temp, O_WRONLY | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC,
-                    0644);
+                    MODE);
     return fd < 0 ? -errno : fd;
 }
 
@@ -87,12 +92,24 @@ static int create_mending(struct statusfile *file) {
     return fd;
 }
 
-static int fill(int fd, const char *data, size_t length) {
+static int set_mode(struct statusfile *file, int fd) {
+    struct stat st;
+
+    if (file->mode_kept)
+        return 0;
+    if (fstat(fd, &st) < 0)
+        return -errno;
+    file->mode_kept = (st.st_mode & 07777) == MODE;
+    return file->mode_kept || fchmod(fd, MODE) == 0 ? 0 : -errno;
+}
+
+static int fill(struct statusfile *file, int fd, const char *data, size_t length) {
     char newline = '\n';
     const struct iovec parts[] = {{(void *)data, length}, {&newline, 1}};
 
-    if (fchmod(fd, 0644) < 0)
-        return -errno;
+    int r = set_mode(file, fd);
+    if (r < 0)
+        return r;
     ssize_t n = writev(fd, parts, 2);
     if (n < 0)
         return -errno;
@@ -104,7 +121,7 @@ int statusfile_write(struct statusfile *file, const char *data, size_t length) {
 
     if (fd < 0)
         return fd;
-    int r = fill(fd, data, length);
+    int r = fill(file, fd, data, length);
     if (close(fd) < 0 && r == 0)
         r = -errno;
     if (r == 0 && renameat(file->dir_fd, file->temp, file->dir_fd, file->name) < 0)

@@ -14,8 +14,9 @@ struct statusfile;
  * -ENAMETOOLONG. */
 int statusfile_new(struct statusfile **ret, const char *path);
 
-/* Puts data and a newline in place, mode 0644 whatever the umask: five system calls, no heap.
- * Returns 0 or -errno. */
+/* Puts data and a newline in place, mode 0644 whatever the umask was at the first write: four
+ * system calls (six where umask or a default ACL takes of the mode), no heap. Returns 0 or -errno.
+ */
 int statusfile_write(struct statusfile *file, const char *data, size_t length);
 
 /* Leaves the file where it is. Returns NULL. */

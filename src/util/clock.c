@@ -39,6 +39,12 @@ int clock_boot_id(char ret[37]) {
     return 0;
 }
 
+/* By hand: strftime does not pad the year, and is the dearest line of a status object. */
+static void put_digits(char *at, int n, int value) {
+    for (; n > 0; n--, value /= 10)
+        at[n - 1] = (char)('0' + value % 10);
+}
+
 void clock_rfc3339(int64_t t_real_us, char ret[21]) {
     static const int64_t year_0000_s = -62167219200, year_9999_end_s = 253402300799;
     int64_t s = t_real_us / 1000000 - (t_real_us % 1000000 < 0);
@@ -46,11 +52,11 @@ void clock_rfc3339(int64_t t_real_us, char ret[21]) {
 
     s = s < year_0000_s ? year_0000_s : s > year_9999_end_s ? year_9999_end_s : s;
     gmtime_r(&(time_t){(time_t)s}, &tm);
-    strftime(ret, 21, "%Y-%m-%dT%H:%M:%SZ", &tm);
-    if (tm.tm_year + 1900 < 1000) { /* strftime does not pad the year */
-        static const char zeros[] = "000";
-        size_t n = strlen(ret), lack = 20 - n;
-        memmove(ret + lack, ret, n + 1);
-        memcpy(ret, zeros, lack);
-    }
+    memcpy(ret, "0000-00-00T00:00:00Z", 21);
+    put_digits(ret, 4, tm.tm_year + 1900);
+    put_digits(ret + 5, 2, tm.tm_mon + 1);
+    put_digits(ret + 8, 2, tm.tm_mday);
+    put_digits(ret + 11, 2, tm.tm_hour);
+    put_digits(ret + 14, 2, tm.tm_min);
+    put_digits(ret + 17, 2, tm.tm_sec);
 }
