@@ -1,5 +1,5 @@
 """Followers and askers on the daemon's socket, and programs started over and over."""
-import multiprocessing, os, select, socket, statistics, time
+import multiprocessing, os, resource, select, socket, statistics, time
 
 ASK = b'{"jsonrpc":"2.0","id":1,"method":"status"}\n'
 FOLLOW = b'{"jsonrpc":"2.0","id":2,"method":"follow"}\n'
@@ -25,6 +25,8 @@ def _follow(path, n, pipe):
     """In a process of its own. Each tenth of many followers is slow: it takes half a kilobyte now
     and then. Tells through pipe, when asked, how many lines each of the others had since the last
     time, and how many followers are still connected."""
+    _, hard = resource.getrlimit(resource.RLIMIT_NOFILE)
+    resource.setrlimit(resource.RLIMIT_NOFILE, (hard, hard))
     poll, fast, slow = select.epoll(), {}, []
     for i in range(n):
         s = connect(path)
