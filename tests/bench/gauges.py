@@ -1,5 +1,5 @@
 """Pseudo-terminals that are gauges, the programs that read them, and what those cost by /proc."""
-import array, fcntl, os, signal, subprocess, termios, time, tty
+import array, atexit, fcntl, os, signal, subprocess, termios, time, tty
 
 WAIT_S = 60
 
@@ -57,6 +57,7 @@ class Program:
         options = {"stdout": subprocess.DEVNULL, "stderr": subprocess.DEVNULL, **options}
         self.child = subprocess.Popen(args, **options)
         self.pid = self.child.pid
+        atexit.register(self.child.kill)  # a failed run leaves nobody behind; no-op when it ended
 
     def cost(self):
         with open(f"/proc/{self.pid}/schedstat") as file:
