@@ -12,7 +12,7 @@ SHELL   := /bin/sh
 
 # ---- what must be installed (Debian 12 names): the one list ----------------------------------
 DEPS_BUILD := gcc libc6-dev pkg-config libsystemd-dev libudev-dev libserialport-dev libinih-dev \
-              libjansson-dev
+              libjansson-dev liblapacke-dev
 DEPS_CHECK := clang clang-format clang-tidy cppcheck valgrind mandoc libcmocka-dev libgsl-dev \
               libclang-rt-14-dev python3 python3-scipy strace systemd umockdev
 
@@ -45,8 +45,8 @@ CLIENT_L  := util
 BENCH_L   := decode core util
 DAEMON_LD := -lsystemd -ludev -lserialport -linih -ljansson -lm
 CLIENT_LD := -l:libjansson.a -lm
-BENCH_LD  := -linih -lm
-TEST_LD   := -lcmocka -lgsl -lgslcblas $(DAEMON_LD)
+BENCH_LD  := -linih -llapacke -lm
+TEST_LD   := -lcmocka -lgsl -lgslcblas -llapacke $(DAEMON_LD)
 
 src_of = $(wildcard src/$(1)/*.c)
 UNIT   := $(patsubst tests/unit/%.c,%,$(wildcard tests/unit/test_*.c))

@@ -73,6 +73,15 @@ static int take_list(const char *command, const struct arg_spec *spec, const cha
     return r;
 }
 
+static int take_text(const char *command, const struct arg_spec *spec, const char *text,
+                     struct arg_texts *texts) {
+    if (texts->n == ARG_TEXTS_MAX)
+        return bench_fail(EX_USAGE, command, "--%s stands more than %d times", spec->name,
+                          ARG_TEXTS_MAX);
+    texts->text[texts->n++] = text;
+    return 0;
+}
+
 static int take_integer(const char *command, const struct arg_spec *spec, const char *text,
                         int64_t *ret) {
     double value = 0.0;
@@ -100,6 +109,8 @@ static int take(const char *command, const struct arg_spec *spec, const char *te
         return take_number(command, spec, text, member);
     case ARG_LIST:
         return take_list(command, spec, text, member);
+    case ARG_TEXTS:
+        return take_text(command, spec, text, member);
     case ARG_INTEGER:
         return take_integer(command, spec, text, member);
     }

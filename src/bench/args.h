@@ -7,19 +7,25 @@
 #include <stddef.h>
 #include <stdint.h>
 
-enum { ARG_LIST_MAX = 8 };
+enum { ARG_LIST_MAX = 8, ARG_TEXTS_MAX = 7 };
 
 enum arg_kind {
     ARG_FLAG,    /* bool */
     ARG_TEXT,    /* const char *, into argv */
     ARG_VALUE,   /* double in SI, range least..most */
     ARG_LIST,    /* struct arg_list: may be given several times */
+    ARG_TEXTS,   /* struct arg_texts: may be given several times */
     ARG_INTEGER, /* int64_t, range least..most */
 };
 
 struct arg_list {
     size_t n;
     double value[ARG_LIST_MAX];
+};
+
+struct arg_texts {
+    size_t n;
+    const char *text[ARG_TEXTS_MAX]; /* into argv */
 };
 
 struct arg_spec {

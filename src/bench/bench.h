@@ -6,6 +6,7 @@
 
 int bench_sim(int argc, char **argv);
 int bench_replay(int argc, char **argv);
+int bench_fit(int argc, char **argv);
 
 /* Where cell tables are looked for by name, as in brink.conf. */
 #define BENCH_CELL_FOLDERS "/usr/local/share/brink/cells:/usr/share/brink/cells"

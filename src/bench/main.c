@@ -16,6 +16,7 @@ static const struct command {
 } commands[] = {
     {"sim", bench_sim, "simulate a unit and send what its gauge tells"},
     {"replay", bench_replay, "play a log through the estimator and judge what it said"},
+    {"fit", bench_fit, "make a cell table from logs"},
 };
 enum { COMMANDS = sizeof commands / sizeof *commands };
 
