@@ -17,7 +17,7 @@
  *
  * What a row counts: the time it stands for; less under more than 1C, which no small computer
  * draws; less where the curve is steep, as a little charge is many millivolts there. A log
- * with rests counts three times what another does, as rests are the curve.
+ * with rests counts five times what another does, as rests are the curve.
  */
 #pragma once
 

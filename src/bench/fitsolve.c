@@ -18,7 +18,7 @@
 #define LOAD_C      1.0   /* under a load of this C-rate, rows count half */
 #define APART_C     0.3   /* the same in logs of other temperatures: small loads tell best there */
 #define APART_LOAD  30.0  /* and there rows under load count so many times what rests count */
-#define PULSE_LOG   3.0   /* what a log with rests counts: they are the curve */
+#define PULSE_LOG   5.0   /* what a log with rests counts: they are the curve */
 #define OHM_AH      0.06  /* a usual resistance times capacity */
 #define LOW_SHARE   0.2   /* of the median: no resistance lies under */
 #define MOST_V      0.3   /* no curve moves further */

@@ -10,7 +10,7 @@ enum { LINE_MAX_CHARS = 96 };
 
 /* ---- words ----------------------------------------------------------------------------------- */
 
-static const char *const role_words[] = {"slow discharge", "pulses", "changing load"};
+static const char *const role_words[] = {"slow discharge", "pulses", "load"};
 
 static double mV(double volt) {
     return 1000.0 * volt;
@@ -21,7 +21,7 @@ static void say_logs(const struct fit *fit, FILE *out, const char *prefix) {
         const struct fit_log *log = &fit->log[k];
 
         fprintf(out, "%s%s: %s, %.0f C%s, %.0f to %.0f %% of charge;\n", prefix, log->name,
-                role_words[log->role], log->temp_C, log->told_temp ? "" : " assumed",
+                role_words[log->role], round(log->temp_C) + 0.0, log->told_temp ? "" : " assumed",
                 100.0 * (k ? log->low : fit->curve.low), 100.0 * (k ? log->high : fit->curve.high));
         fprintf(out, "%s  the table's terminal voltage is %.1f mV RMS off, %+.1f mV in the mean\n",
                 prefix, mV(fit->residual[k].rms_V), mV(-fit->residual[k].mean_V));
@@ -65,8 +65,9 @@ static void say_rests(const struct fit *fit, FILE *out, const char *prefix) {
                 prefix, fit->temp_C, prefix, prefix);
     else
         fprintf(out,
-                "%s%zu rests from %.0f to %.0f %% moved the curve; they lie %.1f mV RMS off it\n",
-                prefix, fit->n_rests, 100.0 * low, 100.0 * high, mV(fit->rests_rms_V));
+                "%s%zu rest%s between %.0f and %.0f %% moved the curve; %.1f mV RMS are left\n",
+                prefix, fit->n_rests, fit->n_rests == 1 ? "" : "s", 100.0 * low, 100.0 * high,
+                mV(fit->rests_rms_V));
     if (fit->n_rests && low > 0.1)
         fprintf(out, "%sno rest under %.0f %%: the end that stops are decided at is not proved\n",
                 prefix, 100.0 * low);
