@@ -158,19 +158,38 @@ bench: deps-check programs-gcc
 vectors: deps-check
 	@tests/unit/vectors/make.sh
 
-## install     into $(DESTDIR)$(PREFIX)
+## install     into $(DESTDIR)$(PREFIX); /etc/brink.conf only when there is none
+LIBDIR  = $(DESTDIR)$(PREFIX)/lib
+MANDIR  = $(DESTDIR)$(PREFIX)/share/man
+SHARE   = $(DESTDIR)$(PREFIX)/share/brink
+UNITS  := brinkd.socket brink-poweroff.path brink-poweroff.service
+MANUALS = $(foreach s,1 5 7 8,$(patsubst man/%,man$(s)/%,$(wildcard man/*.$(s))))
 install: all
-	install -d $(DESTDIR)$(PREFIX)/sbin $(DESTDIR)$(PREFIX)/bin \
-	    $(DESTDIR)$(PREFIX)/share/brink/cells $(DESTDIR)/etc
+	install -d $(DESTDIR)$(PREFIX)/sbin $(DESTDIR)$(PREFIX)/bin $(SHARE)/cells $(DESTDIR)/etc \
+	    $(LIBDIR)/systemd/system $(LIBDIR)/sysusers.d $(LIBDIR)/tmpfiles.d $(LIBDIR)/udev/rules.d
 	install -m 755 $(BUILD)/gcc/brinkd $(DESTDIR)$(PREFIX)/sbin/
 	install -m 755 $(BUILD)/gcc/brink $(BUILD)/gcc/brink-bench $(DESTDIR)$(PREFIX)/bin/
-	install -m 644 conf/cells/*.ini $(DESTDIR)$(PREFIX)/share/brink/cells/
+	install -m 644 conf/cells/*.ini $(SHARE)/cells/
+	install -m 644 conf/brink.conf $(SHARE)/
+	[ -e $(DESTDIR)/etc/brink.conf ] || install -m 644 conf/brink.conf $(DESTDIR)/etc/
+	sed 's|@PREFIX@|$(PREFIX)|g' systemd/brinkd.service.in >$(LIBDIR)/systemd/system/brinkd.service
+	chmod 644 $(LIBDIR)/systemd/system/brinkd.service
+	install -m 644 $(addprefix systemd/,$(UNITS)) $(LIBDIR)/systemd/system/
+	install -m 644 systemd/sysusers.d/brink.conf $(LIBDIR)/sysusers.d/
+	install -m 644 systemd/tmpfiles.d/brink.conf $(LIBDIR)/tmpfiles.d/
+	install -m 644 systemd/rules.d/70-brink.rules $(LIBDIR)/udev/rules.d/
+	for page in $(MANUALS); do install -D -m 644 man/$${page#*/} $(MANDIR)/$$page || exit 1; done
+	@echo "next, as root: systemd-sysusers; systemd-tmpfiles --create; systemctl daemon-reload;"
+	@echo "edit /etc/brink.conf; brinkd --verify; systemctl enable --now brinkd"
 
 ## uninstall   what install put there, except /etc/brink.conf
 uninstall:
 	rm -f $(DESTDIR)$(PREFIX)/sbin/brinkd $(DESTDIR)$(PREFIX)/bin/brink \
-	    $(DESTDIR)$(PREFIX)/bin/brink-bench
-	rm -rf $(DESTDIR)$(PREFIX)/share/brink
+	    $(DESTDIR)$(PREFIX)/bin/brink-bench $(LIBDIR)/sysusers.d/brink.conf \
+	    $(LIBDIR)/tmpfiles.d/brink.conf $(LIBDIR)/udev/rules.d/70-brink.rules \
+	    $(addprefix $(LIBDIR)/systemd/system/,brinkd.service $(UNITS)) \
+	    $(addprefix $(MANDIR)/,$(MANUALS))
+	rm -rf $(SHARE)
 
 ## clean       remove build/
 clean:
