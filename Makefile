@@ -179,6 +179,7 @@ install: all
 	install -m 644 systemd/tmpfiles.d/brink.conf $(LIBDIR)/tmpfiles.d/
 	install -m 644 systemd/rules.d/70-brink.rules $(LIBDIR)/udev/rules.d/
 	for page in $(MANUALS); do install -D -m 644 man/$${page#*/} $(MANDIR)/$$page || exit 1; done
+	$(if $(filter /usr /usr/local,$(PREFIX)),,@echo "tables: add 'cells = $(PREFIX)/share/brink/cells' to [files] in /etc/brink.conf")
 	@echo "next, as root: systemd-sysusers; systemd-tmpfiles --create; systemctl daemon-reload;"
 	@echo "edit /etc/brink.conf; brinkd --verify; systemctl enable --now brinkd"
 

@@ -20,6 +20,7 @@ static const double AHEAD_CHARGE = 0.01, AHEAD_LOAD = 0.05; /* changes that ask 
 static const double AHEAD_IDLE = 0.1; /* of the typical load: under it changes do not matter */
 static const int WILD_MOST = 10;
 static const int WARMUP = 3; /* a gauge may tell rubbish right after it wakes; inrush passes */
+static const int WARMUP_AGAIN = 1; /* restarted beside a gauge that ran on */
 /* Learned over a stop of unknown events (swapped, charged, stood long): spread of the charge. */
 static const double AWAY_SD = 0.10, AWAY_SD_h = 0.002;
 
@@ -109,8 +110,11 @@ void watch_restore(struct watch *watch, const struct watch_memory *memory, doubl
         if (memory_sound(&memory->pack[i]))
             prior_from(&watch->pack[i].prior, &memory->pack[i], &watch->config.pack[i].cell, gone_s,
                        same_boot);
-    if (same_boot)
-        ladder_resume(&watch->ladder, memory->stage, memory->stage_since_us, memory->cause);
+    if (!same_boot)
+        return;
+    for (size_t i = 0; i < watch->config.n_packs; i++)
+        watch->pack[i].warmup = WARMUP_AGAIN;
+    ladder_resume(&watch->ladder, memory->stage, memory->stage_since_us, memory->cause);
 }
 
 void watch_remember(const struct watch *watch, struct watch_memory *ret) {

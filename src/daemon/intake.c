@@ -144,6 +144,7 @@ static void open_now(struct manager *m) {
     in->state = STATUS_GAUGE_OPEN;
     in->t_open_us = clock_boot_us();
     m->outlet.told_stage = -1;
+    outlet_publish(m);
 }
 
 /* Only a line proves that the gauge is back: a port that opens and dies again is not. */
@@ -222,6 +223,18 @@ static void tell_bad_lines(struct manager *m, int64_t t_boot_us) {
     in->t_bad_told_us = t_boot_us;
 }
 
+/* A gauge that tells nothing but rubbish shall be seen doing so before it counts as silent. */
+static bool bad_lines_due(struct manager *m, int64_t t_boot_us) {
+    struct intake *in = &m->intake;
+    uint64_t bad_lines = gauge_counts(in->gauge)->bad_lines;
+
+    if (bad_lines == in->bad_shown || t_boot_us - in->t_bad_shown_us < SECOND_us)
+        return false;
+    in->bad_shown = bad_lines;
+    in->t_bad_shown_us = t_boot_us;
+    return true;
+}
+
 static int on_gauge(sd_event_source *source, int fd, uint32_t revents, void *userdata) {
     struct manager *m = userdata;
     struct frame frame;
@@ -242,7 +255,7 @@ static int on_gauge(sd_event_source *source, int fd, uint32_t revents, void *use
         put_off_tick(m);
     if (r != 0)
         lose(m, r);
-    if (fed || r != 0)
+    if (fed || r != 0 || bad_lines_due(m, t_boot_us))
         outlet_publish(m);
     return 0;
 }
@@ -347,7 +360,7 @@ void intake_change(struct manager *m, struct gauge *gauge) {
         in->wait_us = WAIT_FIRST_us;
         in->told_lost = false;
         in->told_why = 0;
-        in->bad_told = 0;
+        in->bad_told = in->bad_shown = 0;
         add_hotplug(m);
         open_now(m);
     }

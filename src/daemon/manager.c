@@ -3,6 +3,7 @@
 
 #include "act/poweroff.h"
 #include "daemon/parts.h"
+#include "daemon/words.h"
 #include "util/cleanup.h"
 #include "util/clock.h"
 #include "util/version.h"
@@ -57,6 +58,16 @@ static void set_aside(struct manager *m, const char *why) {
         r == 0 ? "kept as .bad" : "left where it is: ", r == 0 ? "" : strerrordesc_np(-r));
 }
 
+/* A unit that went down looks like one that failed: the run before says why it ended. */
+static void tell_how_it_ended(const struct manager *m, const struct watch_memory *memory) {
+    struct journal_about about = {.unit = m->config.unit.name};
+
+    if (memory->stage >= STAGE_EDGE)
+        journal_write(JOURNAL_STATE, LOG_L_NOTICE, &about,
+                      "the run before ended in stage %s, because %s",
+                      status_stage_name(memory->stage), words_rule(memory->cause));
+}
+
 /* What an earlier run has learned. A reported stop (action = report) is not gone on with: nothing
  * was under way, and starting the daemon anew is how a person clears it. */
 static void recall(struct manager *m) {
@@ -73,6 +84,7 @@ static void recall(struct manager *m) {
                     m->config.files.state, strerrordesc_np(-r));
     if (r != 0)
         return;
+    tell_how_it_ended(m, &state.memory);
     state_now(&now);
     double gone_s = state_gone_s(&state.time, &now, &same_boot);
     if (state.memory.stage == STAGE_LEAVING && m->config.stop.action == CONFIG_ACTION_REPORT) {
@@ -265,9 +277,8 @@ int manager_new(struct manager **ret, const char *config_path) {
 int manager_run(struct manager *m) {
     struct journal_about about = {.unit = m->config.unit.name};
 
-    intake_start(m);
     intake_tick(m, clock_boot_us());
-    intake_rearm(m);
+    intake_start(m);
     journal_write(JOURNAL_READY, LOG_L_NOTICE, &about,
                   "brinkd " BRINK_VERSION " watches %s by gauge %s, action = %s",
                   m->config.unit.name, intake_describe(m),

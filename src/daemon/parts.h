@@ -45,6 +45,8 @@ struct intake {
     uint32_t told_why;     /* reasons logged since, one bit each */
     uint64_t bad_told;     /* bad lines as last logged */
     int64_t t_bad_told_us; /* -1 = never */
+    uint64_t bad_shown;    /* bad lines as last published for their own sake */
+    int64_t t_bad_shown_us;
 };
 
 struct outlet {

@@ -10,8 +10,7 @@
 
 enum { DURATION_SIZE = 32 };
 
-/* Which rule decided, as the middle of a sentence. */
-static const char *rule(enum cause cause) {
+const char *words_rule(enum cause cause) {
     static const char *const rules[] = {
         [CAUSE_NONE] = "no limit is reached",
         [CAUSE_CHARGE] = "the charge is at its limit",
@@ -79,7 +78,7 @@ char *words_reason(const struct report *report, const struct watch_config *watch
     int decided = report->cause_pack;
 
     buf[0] = '\0';
-    text_append(buf, size, &length, "%s", rule(report->cause));
+    text_append(buf, size, &length, "%s", words_rule(report->cause));
     if (decided >= 0 && (size_t)decided < watch->n_packs)
         text_append(buf, size, &length, " (pack %s)", watch->pack[decided].name);
     text_append(buf, size, &length, ": ");
