@@ -143,7 +143,7 @@ sanitize: deps-check programs-san unit-san
 ## memcheck    run the unit tests and a daemon run under valgrind
 memcheck: deps-check programs-gcc unit-gcc
 	@WRAP="valgrind -q --leak-check=full --error-exitcode=99 --exit-on-first-error=no" \
-	    tests/run $(BUILD)/gcc $(UNIT)
+	    tests/run $(BUILD)/gcc $(UNIT) -- tests/system/test_daemon
 
 ## fuzz        every fuzz target for FUZZ_SECONDS (60) seconds
 FUZZ_SECONDS ?= 60

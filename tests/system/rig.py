@@ -12,6 +12,7 @@ import time
 import tty
 
 WAIT_S = 30
+WRAP = os.environ.get("WRAP", "").split()  # valgrind
 
 
 def until(what, condition, seconds=WAIT_S):
@@ -107,10 +108,10 @@ class Rig:
         with open(self.at("brink.conf"), "w") as f:
             f.write(text)
 
-    def start(self, ready=True, environment=None, wrap=()):
+    def start(self, ready=True, environment=None):
         self.log = open(self.at("log"), "a+")
         env = dict(os.environ, NOTIFY_SOCKET=self.at("notify"), **(environment or {}))
-        self.process = subprocess.Popen([*wrap, self.brinkd, "--config", self.at("brink.conf")],
+        self.process = subprocess.Popen([*WRAP, self.brinkd, "--config", self.at("brink.conf")],
                                         env=env, stderr=self.log, stdin=subprocess.DEVNULL)
         if ready:
             self.note("READY=1")
