@@ -28,6 +28,8 @@ void ladder_resume(struct ladder *ladder, enum stage stage, int64_t stage_since_
     ladder->stage = stage;
     ladder->stage_since_us = stage_since_us;
     ladder->cause = cause;
+    if (stage == STAGE_EDGE) /* confirmed then: a daemon in a crash loop leaves, too */
+        ladder->edge = (struct ladder_hold){stage_since_us, LADDER_SAMPLES};
 }
 
 static double since_s(int64_t then_us, int64_t now_us) {
@@ -96,7 +98,7 @@ static void step_down(struct ladder *ladder, const struct ladder_input *in) {
         move(ladder, STAGE_RESERVE, reserve != CAUSE_NONE ? reserve : edge, pack, in->t_boot_us);
     else if (ladder->stage == STAGE_RESERVE && to_edge)
         move(ladder, STAGE_EDGE, edge, pack, in->t_boot_us);
-    else if (ladder->stage == STAGE_EDGE && edge != CAUSE_NONE &&
+    else if (ladder->stage == STAGE_EDGE && to_edge &&
              since_s(ladder->stage_since_us, in->t_boot_us) >= config->grace_s)
         move(ladder, STAGE_LEAVING, edge, pack, in->t_boot_us);
 }

@@ -266,6 +266,35 @@ static void an_adapter_late_in_the_grace_holds_the_order_back(void **unused) {
     assert_int_equal(run(&l, lifted, &t_s, 40), STAGE_RESERVE);
 }
 
+/* A condition that shows in one of many samples holds the stage in edge, and orders nothing. */
+static void a_flicker_after_the_grace_orders_nothing(void **unused) {
+    struct ladder l;
+    int t_s = 0;
+
+    (void)unused;
+    ladder_init(&l, &CONFIG, 0);
+    assert_int_equal(run(&l, at_cutoff(CAUSE_REST), &t_s, 70), STAGE_EDGE);
+    for (int i = 0; i < 20; i++) {
+        struct ladder_input near = well();
+
+        near.clear = false;
+        assert_int_equal(run(&l, near, &t_s, 9), STAGE_EDGE);
+        assert_int_equal(run(&l, at_cutoff(CAUSE_REST), &t_s, 1), STAGE_EDGE);
+    }
+    assert_int_equal(run(&l, at_cutoff(CAUSE_REST), &t_s, 31), STAGE_LEAVING);
+}
+
+static void a_resumed_countdown_is_not_confirmed_anew(void **unused) {
+    struct ladder l;
+    int t_s = 100;
+
+    (void)unused;
+    ladder_init(&l, &CONFIG, 100000000);
+    ladder_resume(&l, STAGE_EDGE, 50000000, CAUSE_CHARGE);
+    assert_int_equal(run(&l, at_cutoff(CAUSE_CHARGE), &t_s, 9), STAGE_EDGE);
+    assert_int_equal(run(&l, at_cutoff(CAUSE_CHARGE), &t_s, 1), STAGE_LEAVING);
+}
+
 static void the_way_up_has_a_margin(void **unused) {
     struct ladder_input in = well();
     struct ladder l;
@@ -337,6 +366,8 @@ int main(void) {
         cmocka_unit_test(floor_needs_distinct_samples_in_a_row),
         cmocka_unit_test(an_adapter_that_lifts_rescues_from_edge),
         cmocka_unit_test(an_adapter_late_in_the_grace_holds_the_order_back),
+        cmocka_unit_test(a_flicker_after_the_grace_orders_nothing),
+        cmocka_unit_test(a_resumed_countdown_is_not_confirmed_anew),
         cmocka_unit_test(the_way_up_has_a_margin),
         cmocka_unit_test(property_no_jump_and_no_return),
     };
