@@ -12,7 +12,6 @@
 #include <signal.h>
 #include <string.h>
 #include <sysexits.h>
-#include <systemd/sd-daemon.h>
 
 /* ---- config --------------------------------------------------------------------------------- */
 
@@ -175,7 +174,7 @@ static void reload(struct manager *m) {
     scoped(free_p) struct change *change = calloc(1, sizeof(*change));
     struct journal_about about = outlet_about(m);
 
-    sd_notify(0, "RELOADING=1");
+    notify_send(&m->notify, "RELOADING=1");
     int r = change ? prepare(m, change) : -ENOMEM;
     if (r == 0) {
         commit(m, change);
@@ -186,7 +185,7 @@ static void reload(struct manager *m) {
                       "config %s is refused%s%s; the one before stays in force", m->config_path,
                       r < 0 ? ": " : "", r < 0 ? strerrordesc_np(-r) : "");
     }
-    sd_notify(0, "READY=1");
+    notify_send(&m->notify, "READY=1");
 }
 
 static int on_reload(sd_event_source *source, const struct signalfd_siginfo *info, void *userdata) {
@@ -243,7 +242,7 @@ static int set_up(struct manager *m) {
     if (r >= 0)
         r = add_signals(m);
     if (r >= 0)
-        r = sd_event_set_watchdog(m->event, true);
+        r = notify_open(&m->notify, m->event);
     if (r < 0) {
         log_error("event loop: %s", strerrordesc_np(-r));
         return EX_OSERR;
@@ -263,6 +262,7 @@ int manager_new(struct manager **ret, const char *config_path) {
 
     if (!m)
         return EX_OSERR;
+    m->notify.fd = -1;
     m->config_path = config_path;
     int r = set_up(m);
     if (r != 0)
@@ -283,9 +283,9 @@ int manager_run(struct manager *m) {
                   "brinkd " BRINK_VERSION " watches %s by gauge %s, action = %s",
                   m->config.unit.name, intake_describe(m),
                   m->config.stop.action == CONFIG_ACTION_POWEROFF ? "poweroff" : "report");
-    sd_notify(0, "READY=1");
+    notify_send(&m->notify, "READY=1");
     int r = sd_event_loop(m->event);
-    sd_notify(0, "STOPPING=1");
+    notify_send(&m->notify, "STOPPING=1");
     if (r < 0)
         log_error("event loop: %s", strerrordesc_np(-r));
     outlet_save_state(m);
@@ -299,6 +299,7 @@ void manager_free(struct manager *m) {
         return;
     intake_done(m);
     outlet_done(m);
+    notify_close(&m->notify);
     sd_event_unref(m->event);
     free(m);
 }

@@ -11,7 +11,6 @@
 #include <math.h>
 #include <string.h>
 #include <sysexits.h>
-#include <systemd/sd-daemon.h>
 
 static const int64_t STOP_RETRY_us = 5 * 1000000LL;
 static const int64_t STATE_FIRST_us = 60 * 1000000LL, STATE_EVERY_us = 900 * 1000000LL;
@@ -73,27 +72,34 @@ static void retry_stop(struct outlet *out) {
     sd_event_source_set_enabled(out->stop_timer, SD_EVENT_ONESHOT);
 }
 
-static void stop(struct manager *m) {
+/* Says nothing, because saying may take time. Returns 0 or -errno. */
+static int give_order(struct manager *m) {
     struct outlet *out = &m->outlet;
+
+    if (m->config.stop.action == CONFIG_ACTION_REPORT) {
+        out->request = STATUS_REQUEST_REPORTED;
+        return 0;
+    }
+    int r = order(m);
+    out->request = r < 0 ? STATUS_REQUEST_FAILED : STATUS_REQUEST_WRITTEN;
+    if (r < 0)
+        retry_stop(out);
+    return r;
+}
+
+static void tell_order(struct manager *m, int r) {
     struct journal_about about = outlet_about(m);
     char why[WORDS_SIZE];
 
-    if (out->request == STATUS_REQUEST_REPORTED || out->request == STATUS_REQUEST_WRITTEN)
-        return;
     words_reason(&m->report, &m->watch.config, why, sizeof(why));
-    if (m->config.stop.action == CONFIG_ACTION_REPORT) {
-        out->request = STATUS_REQUEST_REPORTED;
+    if (m->outlet.request == STATUS_REQUEST_REPORTED) {
         journal_write(JOURNAL_STOP, LOG_L_WARNING, &about,
                       "the unit should stop now, but action = report, so nothing is ordered: %s",
                       why);
         return;
     }
-    int r = order(m);
     note_failure(m, STATUS_ALERT_STOP_FAILED, r, "the stop request", m->config.stop.request);
-    out->request = r < 0 ? STATUS_REQUEST_FAILED : STATUS_REQUEST_WRITTEN;
-    if (r < 0)
-        retry_stop(out);
-    else
+    if (r == 0)
         journal_write(JOURNAL_STOP, LOG_L_WARNING, &about, "power-off is ordered: %s", why);
 }
 
@@ -102,7 +108,9 @@ static int on_stop_timer(sd_event_source *source, uint64_t due_us, void *userdat
 
     (void)source;
     (void)due_us;
-    stop(m);
+    if (m->outlet.request != STATUS_REQUEST_FAILED)
+        return 0; /* a reload has changed what is to be ordered */
+    tell_order(m, give_order(m));
     outlet_publish(m);
     return 0;
 }
@@ -122,12 +130,14 @@ static void log_stage(struct manager *m) {
 void outlet_step(struct manager *m) {
     struct outlet *out = &m->outlet;
     bool changed = m->report.stage != out->stage;
+    bool due = m->report.stage == STAGE_LEAVING && out->request == STATUS_REQUEST_NONE;
+    int r = due ? give_order(m) : 0;
 
     if (changed)
         log_stage(m);
+    if (due)
+        tell_order(m, r);
     out->stage = m->report.stage;
-    if (out->stage == STAGE_LEAVING && out->request == STATUS_REQUEST_NONE)
-        stop(m); /* before anything that may take time */
     if (!changed)
         return;
     outlet_publish(m);
@@ -236,7 +246,7 @@ static void send_words(struct manager *m) {
     if (strcmp(words, out->words) == 0)
         return;
     memcpy(out->words, words, sizeof(words));
-    sd_notify(0, words);
+    notify_send(&m->notify, words);
 }
 
 /* One that does not take the line now is told again with the next report. */

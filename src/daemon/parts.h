@@ -6,6 +6,7 @@
 #include "core/watch.h"
 #include "daemon/config.h"
 #include "daemon/journal.h"
+#include "daemon/notify.h"
 #include "daemon/state.h"
 #include "daemon/timeline.h"
 #include "gauge/channel.h"
@@ -78,6 +79,7 @@ struct manager {
     struct report report; /* the newest, in the watch's time */
     struct intake intake;
     struct outlet outlet;
+    struct notify notify;
 };
 
 /* ---- intake --------------------------------------------------------------------------------- */

@@ -143,17 +143,21 @@ class Rig:
             self.t += step_s
             self.gauge.send(f"t={self.t:.3f} v={voltage:.4f} {more}\n")
 
+    def read(self, name):
+        """A JSON file; None when it is not there."""
+        try:
+            with open(self.at(name)) as f:
+                return json.load(f)
+        except FileNotFoundError:
+            return None
+
     def status(self):
-        with open(self.at("run/status.json")) as f:
-            return json.load(f)
+        return self.read("run/status.json")
 
     def wait_status(self, what, condition):
         def look():
-            try:
-                status = self.status()
-            except FileNotFoundError:  # not written yet
-                return None
-            return status if condition(status) else None
+            status = self.status()
+            return status if status and condition(status) else None
         try:
             return until(what, look)
         except AssertionError as e:
@@ -166,7 +170,9 @@ class Rig:
         client = socket.socket(socket.AF_UNIX)
         client.settimeout(WAIT_S)
         client.connect(self.at("socket"))
-        return client.makefile("rw")
+        stream = client.makefile("rw")
+        client.close()  # with the stream
+        return stream
 
     def ask(self, method="status"):
         with self.connect() as client:
