@@ -109,7 +109,7 @@ $(BUILD)/fuzz/bin/%: $(BUILD)/fuzz/tobj/fuzz/%.o $(BUILD)/fuzz/libapps.a \
 -include $(shell find $(BUILD) -name '*.d' 2>/dev/null)
 
 # ---- targets ------------------------------------------------------------------------------------
-.PHONY: all deps deps-check help demo check lint format sanitize memcheck bench fuzz vectors \
+.PHONY: all deps deps-check help demo check lint format sanitize memcheck bench accuracy fuzz vectors \
         install uninstall clean purity
 ## all         build the three programs (into build/gcc)
 all: programs-gcc
@@ -153,6 +153,10 @@ fuzz: deps-check $(patsubst %,$(BUILD)/fuzz/bin/%,$(FUZZ))
 ## bench       one table of costs: instructions, wake-ups, memory, start, answers a second
 bench: deps-check programs-gcc
 	@tests/bench/run $(BUILD)/gcc
+
+## accuracy    how good charge and time left are on measured logs; must not fall back (ratchet)
+accuracy: deps-check programs-gcc
+	@tests/accuracy/run $(BUILD)/gcc
 
 ## vectors     make the reference vectors again with SciPy and compare them with what is kept
 vectors: deps-check

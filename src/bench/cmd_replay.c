@@ -13,7 +13,7 @@
 
 struct replay_args {
     const char *log, *cells;
-    double capacity_Ah, start_charge, typical_W, floor_V, settle_s, temp_C;
+    double capacity_Ah, start_charge, start_sd, typical_W, floor_V, settle_s, temp_C;
     double cutoff_charge, cutoff_rest_V;
     int64_t series;
     bool voltage_only, stages, json, help;
@@ -28,6 +28,8 @@ static const struct arg_spec specs[] = {
     {"voltage-only", ARG_FLAG, UNIT_NONE, 0, 0, AT(voltage_only), "leave the current out"},
     {"start", ARG_VALUE, UNIT_SHARE, 0, 1, AT(start_charge),
      "\"60 %\"  what the estimator is told before the first row; else nothing"},
+    {"start-spread", ARG_VALUE, UNIT_SHARE, 0.001, 1, AT(start_sd),
+     "\"25 %\"  one standard deviation of that; 2 % for a rested pack"},
     {"typical", ARG_VALUE, UNIT_WATT, 0.001, 1e5, AT(typical_W),
      "\"3 W\"  the load before anything is learned"},
     {"floor", ARG_VALUE, UNIT_VOLT, 0.1, 100, AT(floor_V),
@@ -78,6 +80,7 @@ static int configure(const struct replay_args *args, const struct logcsv *log,
     *ret = (struct replay_config){
         .voltage_only = args->voltage_only,
         .start_charge = args->start_charge,
+        .start_sd = args->start_sd,
         .capacity_Ah = isfinite(args->capacity_Ah) ? args->capacity_Ah
                        : isfinite(hint_Ah)         ? hint_Ah
                                                    : table.capacity_Ah,
@@ -189,7 +192,11 @@ static void print_json(const struct replay_result *result, double per_s) {
                                       : left->least_s <= left->truth_s ? "true"
                                                                        : "false");
     }
-    printf("],\"samples_per_s\":%.0f}\n", per_s);
+    printf("],");
+    print_number("least_cover", result->least_cover, 4);
+    printf(",");
+    print_number("least_share", result->least_share, 4);
+    printf(",\"samples_per_s\":%.0f}\n", per_s);
 }
 
 static void print_left(const struct replay_left *left) {
@@ -224,6 +231,9 @@ static void print_table(const struct replay_result *result, const struct replay_
     printf("left\n  of the run   true         told         at least     off       at least\n");
     for (int i = 0; i < REPLAY_LEFTS; i++)
         print_left(&result->left[i]);
+    if (isfinite(result->least_cover))
+        printf("least     held %.1f %% of the time, and was %.0f %% of the truth on average\n",
+               100.0 * result->least_cover, 100.0 * result->least_share);
     printf("speed     %.0f samples a second\n", per_s);
 }
 
@@ -274,6 +284,7 @@ static int play(const struct replay_args *args, const struct replay_config *conf
 int bench_replay(int argc, char **argv) {
     struct replay_args args = {.capacity_Ah = UNKNOWN,
                                .start_charge = UNKNOWN,
+                               .start_sd = 0.25,
                                .typical_W = 3.0,
                                .floor_V = 3.0,
                                .settle_s = 900.0,

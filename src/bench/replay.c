@@ -6,7 +6,7 @@
 #include <math.h>
 
 static const int FLOOR_ROWS = 3;
-static const double START_SD = 0.25; /* a start that somebody only guessed */
+static const double LAST_S = 60.0; /* least is not judged so near the end */
 static const double RESISTANCE_SD = 0.2;
 static const int RUN_PCT[REPLAY_LEFTS] = {20, 50, 80, 90};
 
@@ -41,9 +41,10 @@ int replay_measure(struct logcsv *log, double floor_V, struct replay_span *ret) 
 
 struct run {
     const struct replay_config *config;
-    double settled_s;
+    double settled_s, end_s;
     double sum, sum_squares;
-    uint64_t covered;
+    uint64_t covered, least_n, least_held;
+    double least_sum;
     int next_left;
     struct replay_result result;
 };
@@ -85,6 +86,16 @@ static void note_left(struct run *run, double time_s, const struct report *repor
     }
 }
 
+static void judge_least(struct run *run, double time_s, const struct report *report) {
+    double truth_s = run->end_s - time_s;
+
+    if (time_s < run->settled_s || truth_s < LAST_S || !isfinite(report->left_least_s))
+        return;
+    run->least_n++;
+    run->least_held += report->left_least_s <= truth_s;
+    run->least_sum += report->left_least_s / truth_s;
+}
+
 static void start_at(struct watch *watch, const struct replay_config *config) {
     struct watch_memory memory = {.n_packs = 1};
     double typical_W = config->watch.pack[0].typical_W;
@@ -92,7 +103,7 @@ static void start_at(struct watch *watch, const struct replay_config *config) {
     if (!isfinite(config->start_charge))
         return;
     memory.pack[0] = (struct pack_memory){.charge = config->start_charge,
-                                          .charge_sd = START_SD,
+                                          .charge_sd = config->start_sd,
                                           .power_W = typical_W,
                                           .power_sd_W = typical_W,
                                           .resistance_scale = 1.0,
@@ -102,7 +113,8 @@ static void start_at(struct watch *watch, const struct replay_config *config) {
 }
 
 static struct run run_start(const struct replay_config *config, const struct replay_span *span) {
-    struct run run = {.config = config, .settled_s = span->first_s + config->settle_s};
+    struct run run = {
+        .config = config, .settled_s = span->first_s + config->settle_s, .end_s = span->end_s};
 
     for (int i = 0; i < REPLAY_LEFTS; i++) {
         double truth_s = (1.0 - RUN_PCT[i] / 100.0) * (span->end_s - span->first_s);
@@ -120,6 +132,8 @@ static void run_end(const struct run *run, struct replay_result *ret) {
     ret->charge_rmse = sqrt(run->sum_squares / n); /* 0 / 0: nothing was judged */
     ret->charge_mae = run->sum / n;
     ret->band95_cover = (double)run->covered / n;
+    ret->least_cover = (double)run->least_held / (double)run->least_n;
+    ret->least_share = run->least_sum / (double)run->least_n;
     if (!run->result.judged)
         ret->charge_max = UNKNOWN;
 }
@@ -143,6 +157,7 @@ int replay_run(struct logcsv *log, const struct replay_config *config,
         run.result.samples++;
         judge_charge(&run, &row, &report);
         note_left(&run, row.value[LOGCSV_TIME], &report);
+        judge_least(&run, row.value[LOGCSV_TIME], &report);
         if (seen)
             seen(userdata, row.value[LOGCSV_TIME], &report);
     }

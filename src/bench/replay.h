@@ -18,6 +18,7 @@ struct replay_config {
     struct watch_config watch;
     bool voltage_only;
     double start_charge; /* NaN = nothing is known at the start */
+    double start_sd;     /* and how well it is known, one standard deviation */
     double capacity_Ah;  /* of the reference charge: 1 - charge_Ah / capacity_Ah */
     double floor_V;      /* whole pack: the run ends when the voltage stays under it */
     double settle_s;     /* charge errors count from here on */
@@ -42,6 +43,9 @@ struct replay_result {
     double charge_rmse, charge_mae, charge_max; /* 0..1; NaN when nothing was judged */
     double band95_cover; /* share of the judged within charge_low..charge_high */
     struct replay_left left[REPLAY_LEFTS];
+    /* Over all samples from settling to a minute before the end: share at which the truth was at or
+     * above least, and least over the truth in the mean. NaN = never known. */
+    double least_cover, least_share;
 };
 
 /* Called after every row, with the log's time. */
