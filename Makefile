@@ -138,11 +138,11 @@ format: deps-check
 
 ## sanitize    run every test under ASan and UBSan
 sanitize: deps-check programs-san unit-san
-	@tests/run $(BUILD)/san $(UNIT) -- $(SYSTEM)
+	@TEST_RUNS=100 tests/run $(BUILD)/san $(UNIT) -- $(SYSTEM)
 
 ## memcheck    run the unit tests and a daemon run under valgrind
 memcheck: deps-check programs-gcc unit-gcc
-	@WRAP="valgrind -q --leak-check=full --error-exitcode=99 --exit-on-first-error=no" \
+	@TEST_RUNS=8 WRAP="valgrind -q --leak-check=full --error-exitcode=99 --exit-on-first-error=no" \
 	    tests/run $(BUILD)/gcc $(UNIT) -- tests/system/test_daemon
 
 ## fuzz        every fuzz target for FUZZ_SECONDS (60) seconds

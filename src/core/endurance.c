@@ -9,7 +9,6 @@ static const double STEP_CHARGE = 0.01; /* longest step, in charge */
 static const double FINE_S = 1.0;       /* how exactly the end is found, and as a share: */
 static const double FINE_SHARE = 0.002;
 static const double LONGEST_S = 400.0 * 86400.0; /* beyond this there is no end in sight */
-static const double BURST_SPREADS = 1.5;         /* a burst: this many spreads above the mean */
 static const int BURST_HALVINGS = 6;
 static const double LOAD_AHEAD = 0.08;     /* the mean load of the time to come, as a share */
 static const double IDLE_h = 1e-4;         /* a load under this many capacities an hour is none */
@@ -146,7 +145,7 @@ void endurance_compute(const struct cell *cell, const struct tracker_estimate *n
                       .goal = goal,
                       .state = {now->charge, now->u1_V, now->u2_V},
                       .power_W = now->power_mean_W,
-                      .burst_W = BURST_SPREADS * now->fast_sd_W,
+                      .burst_W = now->burst_W,
                       .scale = now->scale,
                       .temp_C = temp_C};
 

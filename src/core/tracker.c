@@ -32,10 +32,11 @@ static const double CHANGE_SHARE = 2.0;      /* a changed supply changes the loa
 static const double SAG_SHARE = 0.20;        /* the mean sag is off by this share */
 static const double UNSEEN_SHARE = 0.1;      /* of the typical load: less is not believed unseen */
 static const double GATE = 5.0;             /* an innovation beyond this many spreads counts less */
+static const double DOUBT_S = 300.0;        /* over so long an innovation is averaged */
+static const int SURPRISES = 5;             /* so many of them in a row are no rubbish */
 static const double CHARGE_MARGIN = 0.02;   /* how far the state may leave 0..1 */
 static const double CHARGE_SD_BLANK = 0.30; /* nothing known */
-static const int ITERATIONS = 4;            /* of an update that crosses bends of the curve */
-static const double SHARP_CHARGE_SD = 0.03; /* under this one pass is enough */
+static const double SHARP_CHARGE_SD = 0.01; /* under this the curve is straight enough */
 
 static double clamp(double x, double low, double high) {
     return fmin(fmax(x, low), high);
@@ -238,21 +239,58 @@ void tracker_predict(struct tracker *tracker, const struct cell *cell, double dt
 
 /* ---- a measurement ---- */
 
-/* Predicted terminal voltage at state x, and its derivatives. */
-static double model_voltage(const struct tracker *t, const struct cell *cell, const double *x,
-                            double voltage_V, double *H) {
+/* The curve as a line over the spread of the charge: value at the charge, slope, and the variance
+ * of what a line leaves over. Statistical linear regression on three points (Lefebvre, Bruyninckx,
+ * De Schutter, IEEE Trans. Autom. Control 47 (2002) 1406-1408), so that a knee within the spread
+ * neither hides nor rules. */
+struct line {
+    double value_V, slope_V, rest_var;
+};
+
+static void lay_line(const struct tracker *t, const struct cell *cell, struct line *ret) {
+    static const double weight[3] = {1.0 / 6.0, 2.0 / 3.0, 1.0 / 6.0};
+    double reach = sqrt(3.0 * t->P[TRACK_CHARGE][TRACK_CHARGE]), charge = t->x[TRACK_CHARGE];
+    double x[3] = {fmax(charge - reach, 0.0), clamp(charge, 0.0, 1.0), fmin(charge + reach, 1.0)};
+    double y[3], mean_x = 0.0, mean_y = 0.0, xx = 0.0, xy = 0.0;
+
+    for (int i = 0; i < 3; i++) {
+        y[i] = ocv_voltage(&cell->table.ocv, x[i]) * cell->voltage_factor;
+        mean_x += weight[i] * x[i];
+        mean_y += weight[i] * y[i];
+    }
+    for (int i = 0; i < 3; i++) {
+        xx += weight[i] * square(x[i] - mean_x);
+        xy += weight[i] * (x[i] - mean_x) * (y[i] - mean_y);
+    }
+    ret->slope_V = xy / xx;
+    ret->value_V = mean_y + ret->slope_V * (charge - mean_x);
+    ret->rest_var = 0.0;
+    for (int i = 0; i < 3; i++)
+        ret->rest_var += weight[i] * square(y[i] - mean_y - ret->slope_V * (x[i] - mean_x));
+}
+
+/* Predicted terminal voltage, its derivatives, and the variance that a bent curve adds to it. */
+static double model_voltage(const struct tracker *t, const struct cell *cell, double voltage_V,
+                            double *H, double *ret_var) {
+    const double *x = t->x;
     struct cell_point point;
-    double current_A = (x[TRACK_MEAN] + x[TRACK_FAST]) / voltage_V;
+    struct line curve;
+    double current_A = power_W(t) / voltage_V;
     double drop_V;
 
     cell_at(cell, x[TRACK_CHARGE], t->temp_C, &point);
+    if (t->P[TRACK_CHARGE][TRACK_CHARGE] > square(SHARP_CHARGE_SD))
+        lay_line(t, cell, &curve);
+    else
+        curve = (struct line){point.ocv_V, point.ocv_slope_V, 0.0};
     drop_V = point.r0_ohm * current_A;
-    H[TRACK_CHARGE] = point.ocv_slope_V;
+    H[TRACK_CHARGE] = curve.slope_V;
     H[TRACK_U1] = H[TRACK_U2] = -1.0;
     H[TRACK_MEAN] = H[TRACK_FAST] = -x[TRACK_SCALE] * point.r0_ohm / voltage_V;
     H[TRACK_SCALE] = t->current_told ? -drop_V : 0.0;
     H[TRACK_BIAS] = 1.0;
-    return point.ocv_V - x[TRACK_SCALE] * drop_V - x[TRACK_U1] - x[TRACK_U2] + x[TRACK_BIAS];
+    *ret_var = curve.rest_var;
+    return curve.value_V - x[TRACK_SCALE] * drop_V - x[TRACK_U1] - x[TRACK_U2] + x[TRACK_BIAS];
 }
 
 /* gain = P H / S; returns S. */
@@ -269,13 +307,23 @@ static double gain(const struct tracker *t, const double *H, double noise_var, d
     return S;
 }
 
-/* States from `considered` on are not learned from this measurement, only reckoned with: their rows
- * of P stay. The others: P -= PH PH' / S, kept symmetric and the diagonal positive. */
-static void shrink(struct tracker *t, const double *PH, double S, int considered) {
+/* What a measurement may teach: states from..to-1. The others are only reckoned with (the consider
+ * filter of Schmidt 1966): what is between two of them stays. */
+struct lesson {
+    int from, to;
+};
+
+static bool taught(const struct lesson *lesson, int i) {
+    return i >= lesson->from && i < lesson->to;
+}
+
+/* P -= PH PH' / S where it is taught, kept symmetric and the diagonal positive. */
+static void shrink(struct tracker *t, const double *PH, double S, const struct lesson *lesson) {
     for (int i = 0; i < TRACK_N; i++) {
         double before = t->P[i][i];
-        for (int j = 0; j <= i && j < considered; j++)
-            t->P[i][j] = t->P[j][i] = t->P[i][j] - PH[i] * PH[j] / S;
+        for (int j = 0; j <= i; j++)
+            if (taught(lesson, i) || taught(lesson, j))
+                t->P[i][j] = t->P[j][i] = t->P[i][j] - PH[i] * PH[j] / S;
         t->P[i][i] = fmax(t->P[i][i], 1e-9 * before);
     }
 }
@@ -283,12 +331,12 @@ static void shrink(struct tracker *t, const double *PH, double S, int considered
 /* A charge outside 0..1 is put on the bound, and what goes along with it by the covariance moves
  * too: a full pack that seems fuller has less sag, hence less load. Projection of D. Simon, "Kalman
  * filtering with state constraints", IET Control Theory Appl. 4 (2010) 1303-1318, section 2.4. */
-static void hold_in_range(struct tracker *t, int considered) {
+static void hold_in_range(struct tracker *t, const struct lesson *lesson) {
     double *x = t->x;
     double outside = x[TRACK_CHARGE] - clamp(x[TRACK_CHARGE], 0.0, 1.0);
 
     if (outside != 0.0)
-        for (int i = considered; i-- > 0;)
+        for (int i = lesson->to; i-- > 0;)
             x[i] -= t->P[i][TRACK_CHARGE] / t->P[TRACK_CHARGE][TRACK_CHARGE] * outside;
     x[TRACK_SCALE] = clamp(x[TRACK_SCALE], 0.3, 8.0);
 }
@@ -315,38 +363,77 @@ static double voltage_noise_var(const struct tracker *t, const struct cell *cell
                fmax(2.0 * MODEL_TAU_S / t->dt_s, 1.0);
 }
 
+/* The readings have contradicted the charge for long: it is read anew, as at the start. */
+static void begin_anew(struct tracker *t, const struct cell *cell, double voltage_V) {
+    struct cell_point point;
+    double sag_V;
+
+    cell_at(cell, t->x[TRACK_CHARGE], t->temp_C, &point);
+    sag_V =
+        t->x[TRACK_SCALE] * point.r0_ohm * power_W(t) / voltage_V + t->x[TRACK_U1] + t->x[TRACK_U2];
+    for (int i = 0; i < TRACK_N; i++)
+        t->P[TRACK_CHARGE][i] = t->P[i][TRACK_CHARGE] = 0.0;
+    set_state(t, TRACK_CHARGE,
+              ocv_charge(&cell->table.ocv, (voltage_V + sag_V) / cell->voltage_factor),
+              CHARGE_SD_BLANK);
+    t->surprises = 0;
+    t->doubt_V = 0.0;
+}
+
+/* The mean innovation of some minutes: in it the reading's noise is gone, and what is left must be
+ * explained by the state's own spread (the consistency test of Y. Bar-Shalom, X. R. Li,
+ * T. Kirubarajan, Estimation with Applications to Tracking and Navigation, 2001, section 5.4). */
+static bool doubtful(struct tracker *t, double innovation_V, double S, double noise_var) {
+    double most_V = GATE * sqrt(S), share = 1.0 - exp(-t->dt_s / DOUBT_S);
+
+    t->doubt_V += share * (clamp(innovation_V, -most_V, most_V) - t->doubt_V);
+    return square(t->doubt_V) > square(GATE) * (S - noise_var + 0.5 * share * noise_var);
+}
+
+/* What a reading may teach; nothing: the charge is to be read anew. No voltage jumps by its
+ * charge: one beyond the gate is a change of the load, or rubbish; only when they go on does the
+ * charge move. */
+static struct lesson lesson_of(struct tracker *t, double innovation_V, double S, double noise_var) {
+    bool doubted = doubtful(t, innovation_V, S, noise_var);
+
+    t->surprises = square(innovation_V) > square(GATE) * S ? t->surprises + 1 : 0;
+    if (doubted || t->surprises >= SURPRISES)
+        return (struct lesson){0, 0};
+    if (t->surprises > 0)
+        return (struct lesson){TRACK_MEAN, TRACK_FAST + 1};
+    return (struct lesson){TRACK_CHARGE, t->current_told ? TRACK_BIAS : TRACK_SCALE};
+}
+
 static void update_voltage(struct tracker *t, const struct cell *cell, double voltage_V) {
-    int considered = t->current_told ? TRACK_BIAS : TRACK_SCALE;
-    double x[TRACK_N], H[TRACK_N], PH[TRACK_N], S = 1.0;
-    double noise_var = voltage_noise_var(t, cell, voltage_V);
-    int passes = t->P[TRACK_CHARGE][TRACK_CHARGE] > square(SHARP_CHARGE_SD) ? ITERATIONS : 1;
+    double H[TRACK_N], PH[TRACK_N], S, curve_var, noise_var = voltage_noise_var(t, cell, voltage_V);
+    double innovation_V = voltage_V - model_voltage(t, cell, voltage_V, H, &curve_var);
+    struct lesson lesson;
 
-    memcpy(x, t->x, sizeof(x));
-    for (int pass = 0; pass < passes; pass++) {
-        double innovation_V = voltage_V - model_voltage(t, cell, x, voltage_V, H);
-
-        for (int i = 0; i < TRACK_N; i++)
-            innovation_V -= H[i] * (t->x[i] - x[i]);
-        S = gated(gain(t, H, noise_var, PH), innovation_V);
-        for (int i = 0; i < considered; i++)
-            x[i] = t->x[i] + PH[i] / S * innovation_V;
+    S = gain(t, H, noise_var + curve_var, PH);
+    lesson = lesson_of(t, innovation_V, S, noise_var + curve_var);
+    if (lesson.to == 0) {
+        begin_anew(t, cell, voltage_V);
+        return;
     }
-    memcpy(t->x, x, sizeof(x));
-    shrink(t, PH, S, considered);
-    hold_in_range(t, considered);
+    S = gated(S, innovation_V);
+    for (int i = lesson.from; i < lesson.to; i++)
+        t->x[i] += PH[i] / S * innovation_V;
+    shrink(t, PH, S, &lesson);
+    hold_in_range(t, &lesson);
 }
 
 static void update_current(struct tracker *t, const struct cell *cell, double voltage_V,
                            double current_A) {
     double H[TRACK_N] = {[TRACK_MEAN] = 1.0 / voltage_V, [TRACK_FAST] = 1.0 / voltage_V};
+    static const struct lesson lesson = {TRACK_CHARGE, TRACK_N};
     double PH[TRACK_N], noise_var, S, innovation_A = current_A - power_W(t) / voltage_V;
 
     noise_var = square(CURRENT_NOISE_h * cell->capacity_Ah) + square(CURRENT_GAIN * current_A);
     S = gain(t, H, noise_var, PH);
     for (int i = 0; i < TRACK_N; i++)
         t->x[i] += PH[i] / S * innovation_A;
-    shrink(t, PH, S, TRACK_N);
-    hold_in_range(t, TRACK_N);
+    shrink(t, PH, S, &lesson);
+    hold_in_range(t, &lesson);
 }
 
 void tracker_update(struct tracker *tracker, const struct cell *cell, double voltage_V,
@@ -378,6 +465,13 @@ void tracker_unseen(struct tracker *tracker) {
 
 /* ---- reading ---- */
 
+static double drawn_W(const struct tracker *t, const struct cell_point *point) {
+    const double *x = t->x;
+    double source_V = point->ocv_V + x[TRACK_BIAS] - x[TRACK_U1] - x[TRACK_U2];
+
+    return t->voltage_V * (source_V - t->voltage_V) / (x[TRACK_SCALE] * point->r0_ohm);
+}
+
 void tracker_read(const struct tracker *tracker, const struct cell *cell,
                   struct tracker_estimate *ret) {
     const double *x = tracker->x;
@@ -390,9 +484,11 @@ void tracker_read(const struct tracker *tracker, const struct cell *cell,
     ret->current_A = ret->power_W / tracker->voltage_V;
     ret->rest_V = point.ocv_V + x[TRACK_BIAS];
     ret->sag_V = x[TRACK_SCALE] * point.r0_ohm * ret->current_A + x[TRACK_U1] + x[TRACK_U2];
+    ret->drawn_W = tracker->current_told ? ret->power_W : drawn_W(tracker, &point);
     ret->power_mean_W = x[TRACK_MEAN];
     ret->power_sd_W = sqrt(tracker->P[TRACK_MEAN][TRACK_MEAN]);
     ret->fast_sd_W = sqrt(tracker->fast_var_W2);
+    ret->burst_W = ret->fast_sd_W;
     ret->scale = x[TRACK_SCALE];
     ret->scale_sd = sqrt(tracker->P[TRACK_SCALE][TRACK_SCALE]);
     ret->u1_V = x[TRACK_U1];

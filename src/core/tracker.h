@@ -7,9 +7,10 @@
  * and, where it is told, the current itself. A converter draws constant power, hence I = P / V.
  * The bias is reckoned with but not learned (it would drink the signal), and so is the resistance
  * scale without a current: S. F. Schmidt's consider filter, Advances in Control Systems 3 (1966)
- * 293-340 (from memory). The update is iterated (Gauss-Newton) because a wide start crosses bends
- * of the curve. Method: G. L. Plett, J. Power Sources 134 (2004) 277-292; iterated update: B. M.
- * Bell and F. W. Cathey, IEEE Trans. Autom. Control 38 (1993) 294-297.
+ * 293-340 (from memory). The curve counts as a line over the spread of the charge (statistical
+ * linear regression), because a wide charge crosses its bends. Readings beyond the gate move the
+ * load only; where they go on, or where the mean innovation contradicts the spread, the charge is
+ * read anew from the voltage. Method: G. L. Plett, J. Power Sources 134 (2004) 277-292.
  */
 #pragma once
 
@@ -32,8 +33,10 @@ struct tracker {
     double typical_W;   /* scale of what is a usual power, > 0 */
     double voltage_V;   /* last measured */
     double temp_C;
-    double dt_s;  /* last step */
-    double age_s; /* since the first sample */
+    double dt_s;    /* last step */
+    double age_s;   /* since the first sample */
+    double doubt_V; /* mean innovation of late */
+    int surprises;  /* readings in a row that contradict the state */
     bool started, current_told;
 };
 
@@ -42,8 +45,10 @@ struct tracker_estimate {
     double rest_V; /* OCV at the charge, with the bias */
     double sag_V;  /* rest_V minus terminal voltage of the model */
     double current_A, power_W;
+    double drawn_W; /* by the last voltage alone: follows each burst, errs with the charge */
     double power_mean_W, power_sd_W;
     double fast_sd_W; /* spread of the bursts */
+    double burst_W;   /* what bursts reach above the mean */
     double scale, scale_sd;
     double u1_V, u2_V;
 };

@@ -20,7 +20,9 @@ static const double AHEAD_CHARGE = 0.01, AHEAD_LOAD = 0.05; /* changes that ask 
 static const double AHEAD_IDLE = 0.1; /* of the typical load: under it changes do not matter */
 static const int WILD_MOST = 10;
 static const int WARMUP = 3; /* a gauge may tell rubbish right after it wakes; inrush passes */
-static const int WARMUP_AGAIN = 1; /* restarted beside a gauge that ran on */
+static const int WARMUP_AGAIN = 1;        /* restarted beside a gauge that ran on */
+static const double LOAD_SEEN_S = 1800.0; /* what a load of an earlier run is worth at most */
+static const double LOAD_SURE = 0.1;      /* known to this share it is worth half of that */
 /* Learned over a stop of unknown events (swapped, charged, stood long): spread of the charge. */
 static const double AWAY_SD = 0.10, AWAY_SD_h = 0.002;
 
@@ -170,6 +172,20 @@ static enum flow flow_of(enum flow before, double smooth_W, double typical_W) {
     return share < -charging ? FLOW_CHARGING : FLOW_RESTING;
 }
 
+/* While the pack carries the unit, the time to come is like what was seen for long; the tracker's
+ * own mean follows each bout. */
+static void learn_load(const struct watch *watch, struct watch_pack *pack, double dt_s) {
+    double horizon_s = pack->endurance.left_s > 0.0 ? pack->endurance.left_s : 3600.0;
+
+    if (pack->flow == FLOW_CHARGING || watch->supply == SUPPLY_ADAPTER)
+        return;
+    if (dt_s > 0.0 && !pack->silent)
+        load_add(&pack->load, pack->now.power_W, pack->now.power_sd_W, pack->now.drawn_W, dt_s);
+    pack->now.power_sd_W = load_sd_W(&pack->load, horizon_s);
+    pack->now.power_mean_W = load_mean_W(&pack->load);
+    pack->now.burst_W = load_burst_W(&pack->load);
+}
+
 static void read_pack(struct watch *watch, size_t i, double dt_s) {
     struct watch_pack *pack = &watch->pack[i];
     const struct pack_config *config = &watch->config.pack[i];
@@ -180,6 +196,7 @@ static void read_pack(struct watch *watch, size_t i, double dt_s) {
     else
         pack->smooth_W += (1.0 - exp(-dt_s / SMOOTH_S)) * (pack->now.power_W - pack->smooth_W);
     pack->flow = flow_of(pack->flow, pack->smooth_W, config->typical_W);
+    learn_load(watch, pack, dt_s);
 }
 
 /* Channels beside the voltage: what cannot be is treated as not told. */
@@ -197,6 +214,16 @@ static void believe_others(struct watch_pack *pack, const struct watch_config *c
         pack->temp_C = config->assumed_temp_C;
     pack->temp_measured = temp_told;
     pack->current_measured = isfinite(s->current_A);
+}
+
+/* What was learned of the load before counts by how well it was known. */
+static void begin_pack(struct watch_pack *pack, double typical_W) {
+    const struct tracker_prior *prior = &pack->prior;
+    double power_W = isfinite(prior->power_W) ? prior->power_W : typical_W;
+    double off = isfinite(prior->power_W) ? prior->power_sd_W / (LOAD_SURE * typical_W) : 10.0;
+
+    tracker_init(&pack->tracker, typical_W, pack->temp_C, prior);
+    load_init(&pack->load, power_W, LOAD_SEEN_S / (1.0 + off * off), typical_W);
 }
 
 static enum watch_verdict feed_pack(struct watch *watch, size_t i, struct pack_sample sample,
@@ -217,7 +244,7 @@ static enum watch_verdict feed_pack(struct watch *watch, size_t i, struct pack_s
     }
     believe_others(pack, &watch->config, &config->cell, &sample);
     if (!pack->known)
-        tracker_init(&pack->tracker, config->typical_W, pack->temp_C, &pack->prior);
+        begin_pack(pack, config->typical_W);
     else
         predict_to(pack, &config->cell, t_boot_us);
     tracker_update(&pack->tracker, &config->cell, sample.voltage_V, sample.current_A, pack->temp_C);

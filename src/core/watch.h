@@ -7,6 +7,7 @@
 #include "core/cell.h"
 #include "core/endurance.h"
 #include "core/ladder.h"
+#include "core/load.h"
 #include "core/report.h"
 #include "core/sample.h"
 #include "core/tracker.h"
@@ -63,7 +64,8 @@ enum watch_error { WATCH_E_CONFIG = 1 };
 struct watch_pack {
     struct tracker tracker;
     struct tracker_prior prior; /* what is known before the first sample */
-    struct tracker_estimate now;
+    struct load load;
+    struct tracker_estimate now; /* its load is that of the time to come */
     struct endurance endurance;
     bool known, spent;
     bool silent;           /* went blind and has not been believed since */

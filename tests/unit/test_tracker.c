@@ -190,8 +190,41 @@ static void assert_sound(const struct tracker *t) {
     }
 }
 
-/* Any voltage a pack can have, any current, temperature and step: state finite, covariance sound.
- */
+/* Near the steep end a wild reading would be fitted best by another charge. */
+static void one_wild_reading_moves_no_charge(void **unused) {
+    static const double wild_V[] = {2.6, 3.0, 4.2, 4.4};
+
+    (void)unused;
+    for (size_t i = 0; i < 4; i++) {
+        struct tracker_prior prior = blank();
+        struct trial t;
+        double before;
+
+        trial_start(&t, 0.35, &prior, 3.0);
+        trial_run(&t, 0, 1800, false);
+        before = t.now.charge;
+        for (int again = 0; again < 3; again++) {
+            tracker_predict(&t.tracker, &t.fen.cell, 1.0);
+            tracker_update(&t.tracker, &t.fen.cell, wild_V[i], UNKNOWN, 25.0);
+        }
+        trial_run(&t, 1800, 1860, false);
+        assert_true(fabs(t.now.charge - before) < 0.02);
+    }
+}
+
+/* By voltage alone a charger that nobody sees would explain it as well. */
+static void a_charge_that_every_reading_contradicts_is_read_anew(void **unused) {
+    struct tracker_prior prior = blank();
+    struct trial t;
+
+    (void)unused;
+    prior.charge = 0.12;
+    prior.charge_sd = 0.004;
+    trial_start(&t, 0.7, &prior, 3.0);
+    trial_run(&t, 0, 1200, true);
+    assert_true(fabs(t.now.charge - t.fen.state.charge) < 0.08);
+}
+
 static void property_no_input_breaks_it(void **unused) {
     uint64_t random = 7;
 
@@ -242,6 +275,8 @@ int main(void) {
         cmocka_unit_test(learns_an_aged_resistance_with_a_current),
         cmocka_unit_test(the_band_holds_the_truth),
         cmocka_unit_test(a_full_pack_stays_at_full),
+        cmocka_unit_test(one_wild_reading_moves_no_charge),
+        cmocka_unit_test(a_charge_that_every_reading_contradicts_is_read_anew),
         cmocka_unit_test(property_no_input_breaks_it),
         cmocka_unit_test(spread_grows_while_nothing_is_heard),
     };
