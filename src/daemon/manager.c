@@ -241,12 +241,14 @@ static int set_up(struct manager *m) {
     r = sd_event_new(&m->event);
     if (r >= 0)
         r = add_signals(m);
-    if (r >= 0)
-        r = notify_open(&m->notify, m->event);
     if (r < 0) {
         log_error("event loop: %s", strerrordesc_np(-r));
         return EX_OSERR;
     }
+    r = notify_open(&m->notify, m->event);
+    if (r < 0)
+        log_warning("NOTIFY_SOCKET cannot be used (%s); the service manager is told nothing",
+                    strerrordesc_np(-r));
     r = outlet_init(m);
     if (r != 0)
         return r;

@@ -48,22 +48,23 @@ static int begin_watchdog(struct notify *notify, sd_event *event) {
     return r < 0 ? r : sd_event_source_set_priority(notify->watchdog, PRIORITY_WATCHDOG);
 }
 
+void notify_close(struct notify *notify) {
+    sd_event_source_disable_unref(notify->watchdog);
+    if (notify->fd >= 0)
+        close(notify->fd);
+    *notify = (struct notify){.fd = -1};
+}
+
 int notify_open(struct notify *notify, sd_event *event) {
     *notify = (struct notify){.fd = -1, .address = {.sun_family = AF_UNIX}};
     int r = find_manager(notify);
     if (r <= 0)
         return r;
     notify->fd = socket(AF_UNIX, SOCK_DGRAM | SOCK_CLOEXEC | SOCK_NONBLOCK, 0);
-    if (notify->fd < 0)
-        return -errno;
-    return begin_watchdog(notify, event);
-}
-
-void notify_close(struct notify *notify) {
-    sd_event_source_disable_unref(notify->watchdog);
-    if (notify->fd >= 0)
-        close(notify->fd);
-    *notify = (struct notify){.fd = -1};
+    r = notify->fd < 0 ? -errno : begin_watchdog(notify, event);
+    if (r < 0)
+        notify_close(notify);
+    return r;
 }
 
 int notify_send(const struct notify *notify, const char *text) {

@@ -110,7 +110,7 @@ class Rig:
 
     def start(self, ready=True, environment=None):
         self.log = open(self.at("log"), "a+")
-        env = dict(os.environ, NOTIFY_SOCKET=self.at("notify"), **(environment or {}))
+        env = {**os.environ, "NOTIFY_SOCKET": self.at("notify"), **(environment or {})}
         self.process = subprocess.Popen([*WRAP, self.brinkd, "--config", self.at("brink.conf")],
                                         env=env, stderr=self.log, stdin=subprocess.DEVNULL)
         if ready:
