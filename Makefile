@@ -106,7 +106,7 @@ $(BUILD)/fuzz/bin/%: $(BUILD)/fuzz/tobj/fuzz/%.o $(BUILD)/fuzz/libapps.a \
 	@mkdir -p $(@D)
 	@$(CC_fuzz) $(LDFLAGS_fuzz) -o $@ $^ $(DAEMON_LD)
 
--include $(shell find $(BUILD) -name '*.d' 2>/dev/null)
+-include $(shell find $(BUILD) -type f -name '*.d' 2>/dev/null)
 
 # ---- targets ------------------------------------------------------------------------------------
 .PHONY: all deps deps-check help demo check lint format sanitize memcheck bench accuracy fuzz vectors \
