@@ -151,8 +151,8 @@ static void count(const struct world *w, uint64_t i, const char *wrong, struct t
     }
 }
 
-/* Of 10000 runs 7 went wrong when this was written, 5 of them with lithium iron phosphate, whose
- * voltage says next to nothing of the charge. */
+/* TEST_SEED 11 to 14 with 2500 runs each: 3 of 10000 went wrong when this was written, 2 of them
+ * with lithium iron phosphate. A stop while blind is not judged as early. */
 static void stops_come_neither_early_nor_late(void **unused) {
     uint64_t seed = number("TEST_SEED", (uint64_t)time(NULL)), runs = number("TEST_RUNS", RUNS);
     uint64_t first = number("TEST_RUN", 0), last = getenv("TEST_RUN") ? first : runs - 1;
